@@ -1,0 +1,5 @@
+"""Entry point of `python -m doe`."""
+
+from doe.cli import main
+
+main()

@@ -1,0 +1,1 @@
+"""Files a foundry works from."""

@@ -1,0 +1,1 @@
+"""What a lithography shop can make: levels, mask layers, features, and how made parts differ."""

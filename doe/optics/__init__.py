@@ -1,0 +1,1 @@
+"""Light from the mask to the pattern, as differentiable JAX functions."""

@@ -1,0 +1,1 @@
+"""Figures for people, drawn from results alone."""

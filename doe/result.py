@@ -1,0 +1,115 @@
+"""A finished design in NumPy: the hatch between the rooms that load JAX and those that do not."""
+
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+from jaxtyping import Bool, Float, Int, UInt8
+
+from doe.config.schema import Config, Limits
+
+Status = Literal["met", "missed", "not judged"]
+
+
+@dataclass(frozen=True)
+class Mask:
+    """The drawn relief; `levels` and `layers` are None for a continuous profile."""
+
+    phase: Float[np.ndarray, "y x"]  # rad, before levels
+    height: Float[np.ndarray, "y x"]  # m, above the deepest place
+    levels: UInt8[np.ndarray, "y x"] | None
+    layers: Bool[np.ndarray, "mask y x"] | None  # True = glass left standing, pi etch first
+
+
+@dataclass(frozen=True)
+class FeatureReport:
+    """What was measured on one binary layer, in pixels (y, x)."""
+
+    rule: tuple[int, int]
+    gap_rule: tuple[int, int]
+    breaches: int  # pixels that opening or closing would change
+    corner_contacts: int
+    edge_length: int  # pixel sides between glass and gap in one cell
+
+
+@dataclass(frozen=True)
+class OrderTable:
+    """Power of every addressed order; the zero order at [ny // 2, nx // 2]."""
+
+    m_y: Int[np.ndarray, " y"]
+    m_x: Int[np.ndarray, " x"]
+    power: Float[np.ndarray, "y x"]
+    target: Float[np.ndarray, "y x"]  # wanted share of the power, 0 = not wanted
+
+
+@dataclass(frozen=True)
+class Trace:
+    """Course of the start that won, one row a look at the drawn design."""
+
+    step: Int[np.ndarray, " row"]
+    loss: Float[np.ndarray, " row"]
+    efficiency: Float[np.ndarray, " row"]
+    uniformity_error: Float[np.ndarray, " row"]
+
+
+@dataclass(frozen=True)
+class Bound:
+    """What a perfect continuous phase could reach, and what the levels leave of it."""
+
+    efficiency: float
+    levels_factor: float  # sinc^2(1/N): an estimate, no ceiling
+    kind: Literal["proved", "best known", "estimate"]
+
+
+@dataclass(frozen=True)
+class LimitVerdict:
+    """One stated limit and how it came out; `met` is None where it was not judged."""
+
+    name: str
+    limit: str
+    value: float | None
+    met: bool | None
+
+
+@dataclass(frozen=True)
+class Result:
+    """Everything a record holds."""
+
+    config: Config
+    config_text: str
+    method: str
+    mask: Mask
+    features: tuple[FeatureReport, ...]
+    orders: OrderTable
+    scores: dict[str, float | None]
+    bound: Bound
+    limits: tuple[LimitVerdict, ...]
+    trace: Trace
+    warnings: tuple[str, ...]
+    seconds: float
+    steps: int
+    made_by: dict[str, str]
+
+    @property
+    def status(self) -> Status:
+        """Whether the drawn mask keeps every stated limit."""
+        return status_of(self.limits)
+
+
+def status_of(limits: tuple[LimitVerdict, ...]) -> Status:
+    """`met` when every judged limit is met, `not judged` when there is none."""
+    judged = [limit.met for limit in limits if limit.met is not None]
+    if not judged:
+        return "not judged"
+    return "met" if all(judged) else "missed"
+
+
+def judge_limits(limits: Limits, scores: dict[str, float | None]) -> tuple[LimitVerdict, ...]:
+    """Each stated limit against the scores; limits on made parts wait for the forecast."""
+    drawn = [
+        LimitVerdict(name, str(one), scores.get(name), one.met_by(scores.get(name)))
+        for name, one in limits.items()
+    ]
+    made = limits.made.items() if limits.made else []
+    waiting = [LimitVerdict(f"made.{name}", str(one), None, None) for name, one in made]
+    return (*drawn, *waiting)

@@ -1,0 +1,1 @@
+"""Records and checkpoints in and out."""
