@@ -95,9 +95,13 @@ def ascend(
 
 
 def grid_size(orders: Int[np.ndarray, " spot"]) -> int:
-    """Samples that hold the sum of waves four times finer than its finest fringe, a power of two."""
+    """Samples, a power of two, that hold a sum of waves four times finer than its fringes."""
     span = int(np.ptp(orders))
     if span == 0:
         return 1
-    size = 2 ** int(np.ceil(np.log2(4 * (span + 1))))
-    return max(32, min(size, LARGEST_GRID), 2 ** int(np.ceil(np.log2(span + 1))))
+    return max(32, min(power_of_two(4 * (span + 1)), LARGEST_GRID), power_of_two(span + 1))
+
+
+def power_of_two(number: int) -> int:
+    """The smallest power of two that is not below a number."""
+    return 1 << (number - 1).bit_length()

@@ -186,7 +186,9 @@ def wording(
         if limit.met is False:
             told.append(f"efficiency of {units.percent(wanted)} is out of reach: it is proved")
         elif wanted > usual:
-            finer = next((n for n in (4, 8, 16) if n > levels > 0 and helps(n, wanted, reachable)), 0)
+            finer = next(
+                (n for n in (4, 8, 16) if n > levels > 0 and helps(n, wanted, reachable)), 0
+            )
             advice = f"; {finer} levels would leave room" if finer else "; lower the limit"
             cautions.append(
                 f"efficiency of {units.percent(wanted)} is above what these levels usually leave"

@@ -1,4 +1,4 @@
-"""What this machine offers: cores, memory within its limits, and the processor's instruction set."""
+"""What this machine offers: cores, memory within its limits, and the instruction set."""
 
 import os
 import platform

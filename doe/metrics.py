@@ -9,7 +9,11 @@ from jaxtyping import Array, Float, Int
 from doe.config.schema import Limits
 from doe.optics.orders import order_numbers
 
+MISS = (
+    1.0  # taken off the merit of a design that misses a limit, so that none beats one that does not
+)
 SHORTFALL_PRICE = 10.0  # efficiency given up for a score one unit nearer its limit
+INSIDE = 2e-4  # of each limit: the search works in float32, the verdict in float64
 USUAL_UNIFORMITY = 0.02  # steers the search where the config states no limit on uniformity
 
 
@@ -90,14 +94,15 @@ def worst_stray(table: Float[Array, "y x"], wanted: Wanted) -> Float[Array, ""]:
 def replica_ratio(pixels: int) -> Float[np.ndarray, " order"]:
     """Power of the nearest replica over that of each addressed order. Source: `worst_stray`."""
     order = np.abs(order_numbers(pixels))
-    return (order / np.maximum(pixels - order, 1)) ** 2 * (pixels > 1)
+    ratio: Float[np.ndarray, " order"] = (order / np.maximum(pixels - order, 1)) ** 2
+    return ratio * (pixels > 1)
 
 
 def range_of(limits: Limits) -> Range:
-    """The limits as arrays in the order of `Scores`."""
+    """The limits as arrays in the order of `Scores`, a trace inside the stated ones."""
     stated = [limit for limit in limits.items() if limit[0] in Scores._fields]
-    low = {name: one.value for name, one in stated if one.sense == ">="}
-    high = {name: one.value for name, one in stated if one.sense == "<="}
+    low = {name: one.value * (1 + INSIDE) for name, one in stated if one.sense == ">="}
+    high = {name: one.value * (1 - INSIDE) for name, one in stated if one.sense == "<="}
     high.setdefault("uniformity_error", USUAL_UNIFORMITY)
     return Range(
         low=jnp.array([low.get(name, -jnp.inf) for name in Scores._fields]),
@@ -106,7 +111,10 @@ def range_of(limits: Limits) -> Range:
 
 
 def merit(found: Scores, limits: Range) -> Float[Array, ""]:
-    """Efficiency less ten times what the limits are missed by: the best design has the most."""
+    """Efficiency where every limit is met, else below 0 by how far they are missed.
+
+    The design with the most merit reaches the limits first and then has the most light.
+    """
     values = jnp.stack(found)
-    excess = jnp.maximum(0.0, jnp.maximum(limits.low - values, values - limits.high))
-    return found.efficiency - SHORTFALL_PRICE * excess.sum()
+    excess = jnp.maximum(0.0, jnp.maximum(limits.low - values, values - limits.high)).sum()
+    return found.efficiency - jnp.where(excess > 0, MISS + SHORTFALL_PRICE * excess, 0.0)

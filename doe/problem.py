@@ -1,4 +1,4 @@
-"""A job as arrays: light, orders, target and the makeable rule bound into differentiable functions."""
+"""A job as arrays: light, orders, target and the makeable rule in differentiable functions."""
 
 from dataclasses import dataclass, field
 from typing import NamedTuple
@@ -34,7 +34,7 @@ class Judged(NamedTuple):
 @jax.tree_util.register_dataclass
 @dataclass(frozen=True)
 class Problem:
-    """A unit cell, its wanted orders and its limits; arrays are leaves, shapes and levels static."""
+    """A unit cell, its wanted orders and its limits; arrays are leaves, the rest is static."""
 
     basis_y: Complex[Array, "order_y y"]
     basis_x: Complex[Array, "order_x x"]

@@ -41,8 +41,8 @@ def focal_position(direction: float, focal_length: float, mapping: Mapping) -> f
     Source: definition of the three lens mappings.
     """
     angle = math.asin(direction)
-    scale = {"f-sin": direction, "f-tan": math.tan(angle), "f-theta": angle}
-    return focal_length * scale[mapping]
+    heights = {"f-sin": direction, "f-tan": math.tan(angle), "f-theta": angle}
+    return focal_length * heights[mapping]
 
 
 def spot_diameter(wavelength: float, focal_length: float, beam_diameter: float, m2: float) -> float:

@@ -1,4 +1,4 @@
-"""Quantities written as text with a unit, to SI numbers and back: the only place that scales units."""
+"""Quantities as text with a unit, to SI numbers and back: the only place that scales units."""
 
 import math
 import re
@@ -22,7 +22,7 @@ ALL = LENGTH | ANGLE | TIME | ENERGY | POWER | FLUENCE | SHARE
 NUMBER = re.compile(r"\s*([-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d{1,3})?)\s*(.*?)\s*", re.DOTALL)
 
 
-class UnitFault(Exception):
+class UnitError(Exception):
     """Text that is no usable quantity: what is wrong, what is allowed, what to write."""
 
     def __init__(self, problem: str, allowed: str, fix: str) -> None:
@@ -30,28 +30,35 @@ class UnitFault(Exception):
         self.problem, self.allowed, self.fix = problem, allowed, fix
 
 
+def split(text: str) -> tuple[str, str]:
+    """Number and unit of a text that is a quantity."""
+    match = NUMBER.fullmatch(text)
+    assert match is not None
+    return match[1], match[2]
+
+
 def parse(text: str, units: dict[str, float], example: str) -> float:
-    """The SI value of text such as `1030 nm`; raises UnitFault."""
+    """The SI value of text such as `1030 nm`; raises UnitError."""
     allowed = f"a number and a unit: {listing(units)}"
     match = NUMBER.fullmatch(text)
     if match is None:
-        raise UnitFault("this is not a number with a unit", allowed, f'write it like "{example}"')
+        raise UnitError("this is not a number with a unit", allowed, f'write it like "{example}"')
     number, unit = match.groups()
     if not unit:
-        raise UnitFault("the unit is missing", allowed, f'write it like "{example}"')
+        raise UnitError("the unit is missing", allowed, f'write it like "{example}"')
     if unit not in units:
         guess = nearest(unit, units)
         hint = f'did you mean "{number} {guess}"?' if guess else f'write it like "{example}"'
         kind = "does not fit here" if unit in ALL else "is not a known unit"
-        raise UnitFault(f"unit {unit!r} {kind}", allowed, hint)
+        raise UnitError(f"unit {unit!r} {kind}", allowed, hint)
     value = float(Decimal(number) * Decimal(repr(units[unit])))  # rounded once: 0.5 um is 500 nm
     if not math.isfinite(value):
-        raise UnitFault("the value must be finite", allowed, f'write it like "{example}"')
+        raise UnitError("the value must be finite", allowed, f'write it like "{example}"')
     return value
 
 
 def show(value: float, units: dict[str, float], digits: int = 4) -> str:
-    """An SI value as readable text in the largest listed unit that leaves a number of at least 1."""
+    """An SI value as text in the largest listed unit that leaves a number of at least 1."""
     magnitude = abs(value)
     names = sorted(units, key=lambda name: units[name], reverse=True)
     unit = next((name for name in names if magnitude >= units[name] * (1 - 1e-9)), names[-1])

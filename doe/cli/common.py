@@ -76,7 +76,7 @@ def readable(name: str, value: float | None) -> str:
         return f"{value:.3f}"
     if name == "position_error":
         return units.length(value) if value else "0"
-    return units.percent(value)
+    return units.percent(value, 3)
 
 
 def readable_limit(verdict: "LimitVerdict") -> str:

@@ -80,7 +80,9 @@ def one_method(
 def rank(result: "Result") -> tuple[bool, float, float]:
     """Order of merit: limits met, then their misses, then efficiency."""
     missed = [
-        limit.value is not None and not limit.met for limit in result.limits if limit.met is not None
+        limit.value is not None and not limit.met
+        for limit in result.limits
+        if limit.met is not None
     ]
     return (result.status == "met", -float(sum(missed)), result.scores["efficiency"] or 0.0)
 

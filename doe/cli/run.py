@@ -4,7 +4,14 @@ from pathlib import Path
 
 import click
 
-from doe.cli.common import CONFIG, default_out, output_options, print_json, print_result, result_json
+from doe.cli.common import (
+    CONFIG,
+    default_out,
+    output_options,
+    print_json,
+    print_result,
+    result_json,
+)
 
 
 @click.command(epilog="Example: doe run configs/needle_mill.toml --out needle_mill")

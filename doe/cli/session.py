@@ -1,4 +1,4 @@
-"""One design on its way: output folder, checkpoints, stopping, progress, and the record it leaves."""
+"""One design on its way: checkpoints, stopping, progress, and the record it leaves."""
 
 import json
 import signal

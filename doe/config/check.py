@@ -17,6 +17,7 @@ from doe.errors import listing, nearest
 from doe.material import MATERIALS
 
 MOST_SPOTS = 20_000
+FEWEST_PIXELS = 8  # along an axis that varies
 ON_ORDER = 0.01  # of the order spacing: an angle this close to an order counts as on it
 SAME_PERIOD = 1e-4  # relative: periods are rounded to the nanometre on the mask
 
@@ -99,11 +100,11 @@ def levels(element: Element, process: Process) -> Iterator[Trouble]:
 def pixels(element: Element) -> Iterator[Trouble]:
     """Enough pixels along each axis that varies."""
     rows, columns = element.pixels
-    if (rows < 8 and rows != 1) or columns < 8:
+    if (rows < FEWEST_PIXELS and rows != 1) or columns < FEWEST_PIXELS:
         yield Trouble(
             "element.pixels",
             "too few pixels to hold a pattern",
-            "8 or more along an axis; [1, N] for a one-dimensional grating along x",
+            f"{FEWEST_PIXELS} or more along an axis; [1, N] for a one-dimensional grating along x",
             "set pixels to 64 or more",
         )
 
@@ -216,7 +217,7 @@ def spots(beam: Beam, element: Element, plane: Plane, target: Spots) -> Iterator
     size = resolved_period(beam, element, plane, target)
     usable = 0 < target.count() <= MOST_SPOTS
     fits = target.weights is None or len(target.weights) == target.count()
-    if size is None or not usable or not fits:
+    if size is None or not usable or not fits or element.pixels[1] < FEWEST_PIXELS:
         return
     steps = (beam.wavelength / size[0], beam.wavelength / size[1])
     wanted = target.spots(steps)
@@ -287,6 +288,14 @@ def feature(
                     f"{units.length(rule)} is more than half the period along {axis}",
                     f"at most {units.length(length / 2)}",
                     "choose a finer process or a longer period",
+                )
+            elif sampling.pixels_for(rule, length / count) > 1:
+                yield Trouble(
+                    key,
+                    f"{units.length(rule)} takes more than one pixel along {axis}, and the search "
+                    f"does not keep such a rule yet",
+                    f"at most the pixel, {units.length(length / count, 6)}",
+                    "use larger pixels or a finer process",
                 )
 
 

@@ -19,17 +19,22 @@ def schema_faults(errors: list[ErrorDetails], document: Document, prefix: str) -
 
     prefix: the table the document holds, where it is not the whole config ("process").
     """
-    return [schema_fault(error, document, prefix) for error in errors]
+    faults = [schema_fault(error, document, prefix) for error in errors]
+    # One value that stands for a pair is wrong twice; it is told once.
+    return list({(fault.line, fault.problem, fault.value): fault for fault in faults}.values())
 
 
 def schema_fault(error: ErrorDetails, document: Document, prefix: str) -> Fault:
     """One error as a fault."""
     path = key_path(error["loc"], prefix)
+    given = error["input"]
+    if error["type"] == "union_tag_invalid":
+        path, given = (*path, "kind"), given["kind"]
     found = path[1:] if prefix else path
     translate = TRANSLATORS.get(error["type"], plain)
     problem, allowed, fix = translate(error, path)
     show_value = error["type"] not in ("missing", "extra_forbidden")
-    value = shorten(error["input"]) if show_value else None
+    value = shorten(given) if show_value else None
     line = document.line_of(found)
     return Fault(problem, allowed, fix, document.file, line, ".".join(path), value)
 
@@ -79,8 +84,10 @@ def missing(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
         needed = [name for name, field in Config.model_fields.items() if field.is_required()]
         return f"the section [{path[0]}] is missing", listing(needed), f"add [{path[0]}]"
     table = ".".join(path[:-1])
-    return "this key is required", "a value", f"add `{path[-1]} = ...`" + (
-        f" to [{table}]" if table else " at the top of the file"
+    return (
+        "this key is required",
+        "a value",
+        f"add `{path[-1]} = ...`" + (f" to [{table}]" if table else " at the top of the file"),
     )
 
 
@@ -113,11 +120,11 @@ def own(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
 
 def choice(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
     """A text that is none of the listed ones."""
-    context = error.get("ctx", {})
-    expected = str(context.get("expected") or context.get("expected_tags") or "")
+    context = error["ctx"]
+    expected = str(context.get("expected") or context.get("expected_tags"))
     options = [word.strip(" '") for word in expected.replace(" or ", ",").split(",")]
-    given = error["input"]
-    guess = nearest(str(given), options) if not isinstance(given, dict) else None
+    given = error["ctx"].get("tag", error["input"])
+    guess = nearest(str(given), options)
     fix = f'did you mean "{guess}"?' if guess else "choose one of these"
     return "this choice does not exist", ", ".join(options), fix
 
@@ -141,6 +148,11 @@ def number(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
     return f"this is not {sort}", sort, "write it without quotes, true or false"
 
 
+def empty(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
+    """A list without entries."""
+    return "the list is empty", "at least one entry", "give one"
+
+
 def plain(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
     """Any other error, in the words of the schema."""
     text = error["msg"].replace("Input should be ", "")
@@ -148,6 +160,8 @@ def plain(error: ErrorDetails, path: tuple[str, ...]) -> Parts:
 
 
 Translator = Callable[[ErrorDetails, tuple[str, ...]], Parts]
+
+# Error types of the schema library and how each is told; all others are told as `plain`.
 TRANSLATORS: dict[str, Translator] = {
     "missing": missing,
     "extra_forbidden": unknown,
@@ -159,6 +173,7 @@ TRANSLATORS: dict[str, Translator] = {
     "greater_than_equal": bound,
     "less_than": bound,
     "less_than_equal": bound,
+    "too_short": empty,
     "int_type": number,
     "int_from_float": number,
     "float_type": number,

@@ -27,7 +27,9 @@ def load(path: Path) -> tuple[Config, str]:
     sections = sound_sections(raw, document, faults)
     faults += [placed(trouble, document) for trouble in check.run(sections)]
     if faults:
-        raise ConfigError(*sorted(set(faults), key=lambda fault: (fault.line or 0, fault.key or "")))
+        raise ConfigError(
+            *sorted(set(faults), key=lambda fault: (fault.line or 0, fault.key or ""))
+        )
     config = resolve(Config.model_validate(raw))
     check_memory(config, document)
     return config, document.text
@@ -89,9 +91,7 @@ def with_process_file(document: Document, path: Path, faults: list[Fault]) -> di
     return raw
 
 
-def sound_sections(
-    raw: dict[str, Any], document: Document, faults: list[Fault]
-) -> dict[str, Any]:
+def sound_sections(raw: dict[str, Any], document: Document, faults: list[Fault]) -> dict[str, Any]:
     """The tables that are right by themselves; the faults of the others join `faults`."""
     bad: set[str] = set()
     try:

@@ -30,7 +30,7 @@ def parse_errors(given: tuple[str, ...], config: Config) -> Errors:
             )
         try:
             found[name] = units.parse(value, units.SHARE, "3 %")
-        except units.UnitFault as fault:
+        except units.UnitError as fault:
             raise ConfigError(
                 Fault(fault.problem, fault.allowed, fault.fix, key="--error", value=text)
             ) from None

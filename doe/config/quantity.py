@@ -1,4 +1,4 @@
-"""Field types of the config: text with a unit becomes an SI number, a limit becomes a comparison."""
+"""Field types of the config: a text with a unit to an SI number, a limit to a comparison."""
 
 import math
 import re
@@ -9,7 +9,6 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, ValidationInfo
 from pydantic_core import PydanticCustomError
 
 from doe import units
-
 
 POSITIVE = math.ulp(0.0)  # lower end of a range that leaves out 0
 
@@ -47,25 +46,24 @@ def quantity(
             )
         try:
             value = units.parse(given, scale, example)
-        except units.UnitFault as fault:
+        except units.UnitError as fault:
             raise wrong(fault.problem, fault.allowed, fault.fix) from None
-        return in_range(value, scale, low, high, example)
+        return in_range(value, given, scale, low, high)
 
     return BeforeValidator(convert)
 
 
-def in_range(
-    value: float, scale: dict[str, float], low: float, high: float, example: str
-) -> float:
-    """`value` unchanged if it lies in [low, high]."""
+def in_range(value: float, given: str, scale: dict[str, float], low: float, high: float) -> float:
+    """`value` unchanged if it lies in [low, high]; else the error names a unit that would fit."""
     if low <= value <= high:
         return value
-    if low == POSITIVE and value <= 0:
-        raise wrong("the value must be above 0", f"above 0, like {example}", "check the sign")
+    if low >= 0 and value <= 0 and low != 0:
+        raise wrong("the value must be above 0", "above 0", "check the sign")
     span = f"{units.show(low, scale)} to {units.show(high, scale)}"
-    raise wrong(
-        "the value is outside the accepted range", span, f'check the unit, as in "{example}"'
-    )
+    number, unit = units.split(given)
+    other = next((u for u in scale if low <= value / scale[unit] * scale[u] <= high), None)
+    fix = f'did you mean "{number} {other}"?' if other else "check number and unit"
+    raise wrong("the value is outside the accepted range", span, fix)
 
 
 Wavelength = Annotated[
@@ -131,7 +129,9 @@ def limit(kind: Literal["share", "ratio", "length"]) -> Callable[[Any, Validatio
                 f'write it like "{example}"',
             )
         sense, text = match.groups()
-        return Limit(sense="<=" if sense == "<=" else ">=", value=limit_value(text, kind, example))
+        return Limit(
+            sense="<=" if sense == "<=" else ">=", value=limit_value(text, kind, f"{sense} 1 %")
+        )
 
     def convert(given: Any, info: ValidationInfo) -> Any:
         if is_resolved(info):
@@ -151,9 +151,9 @@ def limit_value(text: str, kind: str, example: str) -> float:
     scale = {"share": units.SHARE, "ratio": units.SHARE, "length": units.LENGTH | units.ANGLE}
     try:
         value = units.parse(text, scale[kind], example)
-    except units.UnitFault as fault:
+    except units.UnitError as fault:
         if kind == "share" and "unit is missing" in fault.problem:
-            hint = f'did you mean "{text} %"? at most 100 %'
+            hint = f'did you mean "{example.split()[0]} {text} %"? at most 100 %'
             raise wrong("a share needs the unit %", "0 % to 100 %", hint) from None
         raise wrong(fault.problem, fault.allowed, fault.fix) from None
     if value < 0 or (kind == "share" and value > 1):

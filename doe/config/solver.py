@@ -1,4 +1,4 @@
-"""The `[solver]` table: which methods, how many starts and steps, and the options of each method."""
+"""The `[solver]` table: methods, starts and steps, and the options of each method."""
 
 from typing import Annotated, Any
 

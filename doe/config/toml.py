@@ -67,9 +67,7 @@ def read_text(path: Path) -> str:
     try:
         return path.read_bytes().decode("utf-8-sig")
     except UnicodeDecodeError as error:
-        raise refusal(
-            file, f"byte {error.start} is not UTF-8", "save the file as UTF-8"
-        ) from None
+        raise refusal(file, f"byte {error.start} is not UTF-8", "save the file as UTF-8") from None
     except OSError as error:
         raise refusal(file, f"cannot be read: {error.strerror}", "check permissions") from None
 

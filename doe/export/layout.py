@@ -79,9 +79,9 @@ def corner(point: Int[np.ndarray, " xy"]) -> tuple[float, float]:
 
 def edges(period: int, pixels: int) -> Int[np.ndarray, " edge"]:
     """Pixel borders of one period, each rounded to the nanometre by itself."""
-    borders: Int[np.ndarray, " edge"] = np.rint(
-        np.arange(pixels + 1) * (period / pixels)
-    ).astype(np.int64)
+    borders: Int[np.ndarray, " edge"] = np.rint(np.arange(pixels + 1) * (period / pixels)).astype(
+        np.int64
+    )
     return borders
 
 
@@ -98,9 +98,7 @@ def rectangles(layer: Bool[np.ndarray, "y x"], period: tuple[int, int]) -> Int[n
     end = np.nonzero(change == -1)[1]
     order = np.lexsort((row, end, start))
     row, start, end = row[order], start[order], end[order]
-    goes_on = (
-        (start[1:] == start[:-1]) & (end[1:] == end[:-1]) & (row[1:] == row[:-1] + 1)
-    )
+    goes_on = (start[1:] == start[:-1]) & (end[1:] == end[:-1]) & (row[1:] == row[:-1] + 1)
     first = np.flatnonzero(np.append(True, ~goes_on)) if len(row) else np.zeros(0, int)
     last = np.append(first[1:] - 1, len(row) - 1) if len(row) else first
     x, y = edges(period[1], columns), edges(period[0], rows)

@@ -2,6 +2,7 @@
 
 import csv
 import io
+import math
 
 import numpy as np
 
@@ -26,7 +27,7 @@ def order_csv(result: Result) -> bytes:
     for row, column in zip(rows[strongest], columns[strongest], strict=True):
         orders = int(table.m_y[row]), int(table.m_x[column])
         sines = [order * step for order, step in zip(orders, steps, strict=True)]
-        if np.hypot(*sines) >= 1:
+        if math.hypot(*sines) >= 1:
             continue
         line = [*orders, f"{table.power[row, column]:.8g}", f"{table.target[row, column]:.8g}"]
         line += [f"{sine:.10g}" for sine in sines]

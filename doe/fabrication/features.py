@@ -31,7 +31,8 @@ def breaches(layer: Layer, feature: tuple[int, int], gap: tuple[int, int]) -> La
     Source: definition of this project's rule, by opening (feature) and closing (gap) with a
     rectangle, Serra, Image Analysis and Mathematical Morphology (1982) (from memory).
     """
-    return (layer & ~opened(layer, feature)) | (~layer & ~opened(~layer, gap))
+    broken: Layer = (layer & ~opened(layer, feature)) | (~layer & ~opened(~layer, gap))
+    return broken
 
 
 def opened(layer: Layer, size: tuple[int, int]) -> Layer:

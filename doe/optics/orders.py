@@ -14,9 +14,7 @@ def basis(orders: Int[np.ndarray, " order"], pixels: int) -> Complex[np.ndarray,
     """
     centre = (np.arange(pixels) + 0.5) / pixels
     waves = np.exp(-2j * np.pi * orders[:, None] * centre)
-    weights: Complex[np.ndarray, "order pixel"] = (
-        np.sinc(orders / pixels)[:, None] * waves / pixels
-    )
+    weights: Complex[np.ndarray, "order pixel"] = np.sinc(orders / pixels)[:, None] * waves / pixels
     return weights
 
 

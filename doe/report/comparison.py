@@ -13,18 +13,14 @@ def draw(results: list[Result]) -> bytes:
         efficiency = (result.scores["efficiency"] or 0.0) * 100
         plane.plot(error, efficiency, "o", ms=9, color=colour, label=result.method)
         trace = result.trace
-        course.semilogy(
-            trace.step, trace.uniformity_error * 100, color=colour, label=result.method
-        )
+        course.semilogy(trace.step, trace.uniformity_error * 100, color=colour, label=result.method)
     plane.set_xscale("log")
     plane.set(
         title="drawn masks: up and left is better",
         xlabel="uniformity error (%)",
         ylabel="efficiency (%)",
     )
-    course.set(
-        title="the drawn design on the way", xlabel="step", ylabel="uniformity error (%)"
-    )
+    course.set(title="the drawn design on the way", xlabel="step", ylabel="uniformity error (%)")
     for axes in (plane, course):
         axes.legend()
         axes.grid(alpha=0.3, which="both")

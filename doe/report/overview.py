@@ -2,6 +2,7 @@
 
 from typing import Any
 
+import matplotlib
 import numpy as np
 from matplotlib.colors import ListedColormap
 
@@ -43,8 +44,6 @@ def draw_mask(made: Any, axes: Any, result: Result) -> None:
 
 def colours(count: int) -> Any:
     """One shade for each level, from dark to light."""
-    import matplotlib
-
     return matplotlib.colormaps["cividis"](np.linspace(0, 1, count))
 
 

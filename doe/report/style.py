@@ -3,6 +3,9 @@
 import io
 from typing import Any
 
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+
 # A palette that stays apart for colour-blind readers: Okabe and Ito (2008) (from memory).
 BLUE, ORANGE, GREEN, VERMILION, GREY = "#0072b2", "#e69f00", "#009e73", "#d55e00", "#666666"
 CYCLE = (BLUE, ORANGE, GREEN, VERMILION, GREY)
@@ -10,9 +13,6 @@ CYCLE = (BLUE, ORANGE, GREEN, VERMILION, GREY)
 
 def figure(width: float, height: float, columns: int) -> tuple[Any, Any]:
     """A figure in inches with one row of axes, drawn without any window system."""
-    from matplotlib.backends.backend_agg import FigureCanvasAgg
-    from matplotlib.figure import Figure
-
     made = Figure(figsize=(width, height), layout="constrained")
     FigureCanvasAgg(made)
     return made, made.subplots(1, columns, squeeze=False)[0]

@@ -27,11 +27,11 @@ class Best(NamedTuple):
 
 
 class Look(NamedTuple):
-    """What is written down at one look at the drawn design."""
+    """What is seen of the drawn design: numbers at one look, arrays of starts and looks."""
 
-    loss: Float[Array, "*rows"]
-    efficiency: Float[Array, "*rows"]
-    uniformity_error: Float[Array, "*rows"]
+    loss: Any
+    efficiency: Any
+    uniformity_error: Any
 
 
 class Carry(NamedTuple):
@@ -125,9 +125,7 @@ def solve(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hooks
         )
 
 
-def resumed(
-    problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hooks: Hooks
-) -> Run:
+def resumed(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hooks: Hooks) -> Run:
     """The run a checkpoint holds, or a fresh one."""
     batch = int(hooks.saved[0]["batch"]) if hooks.saved else 0
     fresh = Run(
@@ -141,7 +139,7 @@ def resumed(
     )
     if hooks.saved is None:
         return fresh
-    facts, arrays = hooks.saved
+    _, arrays = hooks.saved
     leaves, shape = jax.tree.flatten(fresh)
     kept = [
         type(leaf)(array) if isinstance(leaf, int) else array
@@ -196,9 +194,7 @@ def advance(
         phase = method.design(state)
         judged = problem.judge(phase)
         better = judged.merit > carry.best.merit
-        best = jax.tree.map(
-            partial(jnp.where, better), Best(judged.merit, phase, end), carry.best
-        )
+        best = jax.tree.map(partial(jnp.where, better), Best(judged.merit, phase, end), carry.best)
         loss = problem.loss(problem.drawn(phase), jnp.float32(1))
         seen = Look(loss, judged.scores.efficiency, judged.scores.uniformity_error)
         return Carry(state, best), seen
@@ -206,9 +202,7 @@ def advance(
     return jax.vmap(one)(carry, keys)
 
 
-def advanced(
-    problem: Problem, method: Method, plan: Plan, keys: PRNGKeyArray, run: Run
-) -> Run:
+def advanced(problem: Problem, method: Method, plan: Plan, keys: PRNGKeyArray, run: Run) -> Run:
     """The run after one more chunk."""
     looks = min(LOOKS, plan.looks - run.look)
     carry, seen = advance(

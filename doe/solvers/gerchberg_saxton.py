@@ -1,8 +1,7 @@
 """The Gerchberg-Saxton loop on the orders of a unit cell."""
 
-from jaxtyping import Array, Complex, Float
-
 import jax.numpy as jnp
+from jaxtyping import Array, Complex, Float
 
 from doe.config.solver import GerchbergSaxton
 from doe.optics.orders import amplitudes, mask_field
@@ -21,9 +20,7 @@ def gerchberg_saxton(options: GerchbergSaxton) -> Method:
     def init(problem: Problem, start: Float[Array, "y x"]) -> Complex[Array, "y x"]:
         return phasor(start)
 
-    def step(
-        problem: Problem, near: Complex[Array, "y x"], tick: Tick
-    ) -> Complex[Array, "y x"]:
+    def step(problem: Problem, near: Complex[Array, "y x"], tick: Tick) -> Complex[Array, "y x"]:
         got = amplitudes(near, problem.basis_y, problem.basis_x)
         orders = jnp.sqrt(problem.share) * unit(got)
         return unit(mask_field(orders, problem.basis_y, problem.basis_x))

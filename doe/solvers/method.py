@@ -13,7 +13,7 @@ State = Any  # a pytree of arrays, so that a checkpoint is its leaves
 class Tick(NamedTuple):
     """Where in the budget a step stands, with a key of its own."""
 
-    index: Int[Array, ""]
+    number: Int[Array, ""]
     fraction: Float[Array, ""]
     key: PRNGKeyArray
 

@@ -21,7 +21,7 @@ class WeightedState(NamedTuple):
 
 
 def weighted(options: Weighted) -> Method:
-    """Gerchberg-Saxton with weights w_k <- w_k (mean |A| / |A_k|)^exponent, exponent 1 as published.
+    """Gerchberg-Saxton, weights w_k <- w_k (mean |A| / |A_k|)^exponent; 1 is as published.
 
     Source: Di Leonardo, Ianni and Ruocco, Opt. Express 15, 1913 (2007) (from memory).
     """

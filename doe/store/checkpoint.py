@@ -9,17 +9,20 @@ from typing import Any
 import numpy as np
 
 from doe import files
-from doe.errors import FileError, Fault
+from doe.errors import Fault, FileError
 
 MAGIC = b"doe checkpoint 1\n"
 NAMES = ("checkpoint.0", "checkpoint.1")  # written by turns, so that the last but one survives
 
 
-def write(folder: Path, turn: int, facts: dict[str, Any], arrays: list[np.ndarray[Any, Any]]) -> None:
+def write(
+    folder: Path, turn: int, facts: dict[str, Any], arrays: list[np.ndarray[Any, Any]]
+) -> None:
     """Write the checkpoint of this turn whole, the one before it untouched."""
     memory = io.BytesIO()
     text = np.frombuffer(json.dumps(facts | {"turn": turn}).encode(), np.uint8)
-    np.savez(memory, facts=text, **{f"leaf_{i}": array for i, array in enumerate(arrays)})
+    leaves: dict[str, Any] = {f"leaf_{i}": array for i, array in enumerate(arrays)}
+    np.savez(memory, facts=text, **leaves)
     body = memory.getvalue()
     digest = hashlib.sha256(body).hexdigest().encode()
     files.write(folder / NAMES[turn % 2], MAGIC + digest + b"\n" + body)

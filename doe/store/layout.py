@@ -23,7 +23,7 @@ SCORES = (
 
 
 def head(image: bytes) -> bytes:
-    """The user block of an image: a JSON line with format, version, size and SHA-256 of the rest."""
+    """The user block of an image: a JSON line with version, size and SHA-256 of the rest."""
     rest = image[BLOCK:]
     facts = {
         "format": FORMAT,

@@ -5,6 +5,7 @@ from typing import Any
 
 import numpy as np
 from jaxtyping import Float
+from PIL import Image, UnidentifiedImageError
 
 from doe.config import derived
 from doe.config.schema import Config
@@ -43,10 +44,13 @@ def phase_of(values: Any, kind: str, config: Config, path: Path) -> Float[np.nda
     if kind == "levels":
         count = config.element.levels
         if count == 0 or values.min() < 0 or values.max() >= count:
-            raise unfit(path, f"the levels run from {values.min()} to {values.max()}", f"0 to {count - 1}")
-        return values.astype(float) * (2 * np.pi / count)
-    scale = derived.phase_height(config) if kind == "height" else 1.0
-    phase: Float[np.ndarray, "y x"] = values.astype(float) / scale
+            raise unfit(
+                path, f"the levels run from {values.min()} to {values.max()}", f"0 to {count - 1}"
+            )
+        scale = 2 * np.pi / count
+    else:
+        scale = 1 / derived.phase_height(config) if kind == "height" else 1.0
+    phase: Float[np.ndarray, "y x"] = values.astype(float) * scale
     return phase
 
 
@@ -63,8 +67,6 @@ def array(path: Path) -> np.ndarray[Any, Any]:
 
 def tiff(path: Path) -> np.ndarray[Any, Any]:
     """The heights of a TIFF file, its size looked at before it is decoded."""
-    from PIL import Image, UnidentifiedImageError
-
     try:
         with Image.open(path) as image:
             if image.width * image.height > MOST_PIXELS:

@@ -12,7 +12,7 @@ import numpy as np
 from doe.config import load
 from doe.config.derived import rule_pixels
 from doe.config.schema import Config
-from doe.errors import FileError, Fault
+from doe.errors import Fault, FileError
 from doe.result import (
     Bound,
     FeatureReport,
