@@ -90,4 +90,4 @@ def etch_depth(wavelength: float, index: float, etch: int) -> float:
 
     Source: Swanson, MIT Lincoln Laboratory TR-854 (1989) (from memory).
     """
-    return wavelength / (2**etch * (index - 1))
+    return wavelength / (2.0**etch * (index - 1))
