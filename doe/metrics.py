@@ -15,6 +15,8 @@ MISS = (
 SHORTFALL_PRICE = 10.0  # efficiency given up for a score one unit nearer its limit
 INSIDE = 2e-4  # of each limit: the search works in float32, the verdict in float64
 USUAL_UNIFORMITY = 0.02  # steers the search where the config states no limit on uniformity
+UNEVEN = 0.25  # of the mean: what the search of the levels takes away
+UNEVENNESS = {"uniformity_error": UNEVEN, "rms_error": UNEVEN, "hottest_to_mean": 1 + UNEVEN}
 
 
 class Scores(NamedTuple):
@@ -107,6 +109,20 @@ def range_of(limits: Limits) -> Range:
     return Range(
         low=jnp.array([low.get(name, -jnp.inf) for name in Scores._fields]),
         high=jnp.array([high.get(name, jnp.inf) for name in Scores._fields]),
+    )
+
+
+def before_search(limits: Range) -> Range:
+    """The limits on a design whose levels are still to be searched: unevenness is let be.
+
+    The search mends unevenness; light that the phase has not got it cannot find.
+    """
+    at = [Scores._fields.index(name) for name in UNEVENNESS]
+    bearable = jnp.array(list(UNEVENNESS.values()))
+    zero = Scores._fields.index("zero_order_to_mean")
+    return Range(
+        low=limits.low.at[zero].multiply(1 - UNEVEN),
+        high=limits.high.at[jnp.array(at)].max(bearable).at[zero].multiply(1 + UNEVEN),
     )
 
 

@@ -4,11 +4,13 @@ import platform
 import time
 from dataclasses import replace
 from importlib.metadata import version
+from typing import Any
 
 import jax
 import jax.numpy as jnp
 import numpy as np
-from jaxtyping import Float
+from jaxtyping import Float, UInt8
+from numpy.typing import NDArray
 
 from doe import __version__, machine
 from doe.bound import bound
@@ -16,43 +18,127 @@ from doe.config import derived, load
 from doe.config.advice import warnings
 from doe.config.made_part import Errors
 from doe.config.schema import Config
-from doe.errors import ConfigError, Fault
+from doe.config.solver import Gradient
+from doe.errors import ConfigError, Fault, NumericalError
 from doe.fabrication.as_made import made_layers, made_phase
 from doe.fabrication.features import measure
 from doe.fabrication.levels import layers_of, nearest_level
-from doe.metrics import Scores, scores
+from doe.metrics import Scores, before_search, scores
 from doe.optics.orders import order_numbers, order_table
 from doe.optics.phasor import phasor
-from doe.problem import DRAWN, problem_of, wanted_of
-from doe.result import Mask, OrderTable, Result, Trace, judge_limits
+from doe.problem import DRAWN, Problem, problem_of, wanted_of
+from doe.result import FeatureReport, Mask, OrderTable, Result, Trace, judge_limits
 from doe.solvers import METHODS
-from doe.solvers.driver import STRIDE, Found, Hooks, plan_of, solve
+from doe.solvers.driver import STRIDE, Found, Look, plan_of, solve
+from doe.solvers.hooks import Hooks, Saved
+from doe.solvers.refine import Refined, is_refined, refine, setup_of
+from doe.solvers.start import random_orders, settled_starts
 from doe.targets import build
 from doe.targets.spots import position_error
 
 OFF_LEVEL = 1e-3  # rad; a phase further from every level is no relief of the config's levels
 
 
-def design(config: Config, text: str, method: str, hooks: Hooks) -> tuple[Result, bool]:
+def design(
+    config: Config, text: str, method: str, hooks: Hooks, *, as_published: bool = False
+) -> tuple[Result, bool]:
     """The best design of one method, and whether it was stopped before its budget was spent.
 
-    text: the config as given. Error: NumericalError as the driver's.
+    Two stages: the method shapes a phase from many starts, and the exact search settles its levels.
+    text: the config as given. as_published: with the method's own starts and without the search.
+    Error: NumericalError as the driver's.
     """
     begun = time.monotonic()
     problem = problem_of(config)
+    is_searched = not as_published and is_refined(config, problem)
+    if is_searched:
+        problem = replace(problem, limits=before_search(problem.limits))
+    saved_shape, saved_refine = saved_by_stage(hooks)
+    if saved_refine is None:
+        shaping = hooks._replace(saved=saved_shape)
+        try:
+            found = shape(config, problem, method, shaping, as_published=as_published)
+        except NumericalError as error:
+            mask = shaped_mask(error.best, problem, config)
+            seconds = time.monotonic() - begun
+            error.best = finish(
+                config, text, method, mask, trace_of(error.best, config.solver.steps), seconds
+            )
+            raise
+    else:
+        found = unpacked(saved_refine[1])
+    mask = shaped_mask(found, problem, config)
+    trace, stopped = trace_of(found, config.solver.steps), found.stopped
+    if is_searched and not stopped:
+        settled = refine(
+            setup_of(config, problem), found.phase, refine_hooks(hooks, found, saved_refine)
+        )
+        mask = replace(mask, **relief(settled.levels, config))
+        trace, stopped = longer(trace, settled), settled.stopped
+    result = finish(config, text, method, mask, trace, time.monotonic() - begun)
+    return result, stopped
+
+
+def shaped_mask(found: Found, problem: Problem, config: Config) -> Mask:
+    """The relief drawn from a shaped phase, before the search."""
+    return mask_of_phase(np.asarray(problem.on_blocks(jnp.asarray(found.phase))), config)
+
+
+def shape(
+    config: Config, problem: Problem, method: str, hooks: Hooks, *, as_published: bool
+) -> Found:
+    """The phase a method makes of its starts."""
     options = config.solver.options(method)
-    plan = plan_of(problem, config.solver.starts, config.solver.steps)
+    solver = config.solver
     key = jax.random.key(config.run.seed)
-    found = solve(problem, METHODS[type(options)](options), plan, key, hooks)
-    result = finish(
-        config,
-        text,
-        method,
-        mask_of_phase(found.phase, config),
-        trace_of(found, config.solver.steps),
-        time.monotonic() - begun,
+    is_own = as_published and not isinstance(options, Gradient)
+    if is_own or solver.start == "random":
+        starts = random_orders(problem, key, solver.starts)
+    else:
+        starts = settled_starts(problem, config.run.seed, solver.starts, solver.hops)
+    plan = plan_of(problem, solver.starts, solver.steps)
+    return solve(problem, METHODS[type(options)](options), plan, starts, key, hooks)
+
+
+def saved_by_stage(hooks: Hooks) -> tuple[Saved | None, Saved | None]:
+    """What a checkpoint holds for the shaping and for the search, at most one being there."""
+    if hooks.saved is None:
+        return None, None
+    is_refine = hooks.saved[0].get("stage") == "refine"
+    return (None, hooks.saved) if is_refine else (hooks.saved, None)
+
+
+def refine_hooks(hooks: Hooks, found: Found, saved: Saved | None) -> Hooks:
+    """Hooks of the search, whose checkpoints carry the shaped phase and its trace along."""
+    mine = packed(found)
+
+    def save(facts: dict[str, Any], arrays: list[NDArray[Any]]) -> None:
+        hooks.save(facts | {"stage": "refine"}, [*mine, *arrays])
+
+    rest = None if saved is None else (saved[0], saved[1][len(mine) :])
+    return hooks._replace(saved=rest, save=save)
+
+
+def packed(found: Found) -> list[NDArray[Any]]:
+    """A finished shaping as arrays of a checkpoint."""
+    return [found.phase, np.array([found.start, found.step]), *map(np.asarray, found.trace)]
+
+
+def unpacked(arrays: list[NDArray[Any]]) -> Found:
+    """The shaping a checkpoint holds."""
+    phase, place, *trace = arrays[: 2 + len(Look._fields)]
+    return Found(phase, int(place[0]), int(place[1]), Look(*trace), stopped=False)
+
+
+def longer(trace: Trace, settled: Refined) -> Trace:
+    """The trace with a row for each block of the search; its loss is the light lost."""
+    last = int(trace.step[-1]) if len(trace.step) else 0
+    return Trace(
+        step=np.append(trace.step, last + settled.block),
+        loss=np.append(trace.loss, 1 - settled.efficiency),
+        efficiency=np.append(trace.efficiency, settled.efficiency),
+        uniformity_error=np.append(trace.uniformity_error, settled.uniformity_error),
     )
-    return result, found.stopped
 
 
 def evaluate(config: Config, text: str, phase: Float[np.ndarray, "y x"], errors: Errors) -> Result:
@@ -94,13 +180,13 @@ def finish(
     table = order_powers(mask, config, errors)
     values = scores_of(table, config)
     target = build(config)
-    feature, gap = derived.rule_pixels(config)
+    features = () if mask.layers is None else measure(mask.layers, *derived.rule_pixels(config))
     return Result(
         config=config,
         config_text=text,
         method=method,
         mask=mask,
-        features=() if mask.layers is None else measure(mask.layers, feature, gap),
+        features=features,
         orders=table,
         scores=values,
         bound=bound(
@@ -108,11 +194,22 @@ def finish(
         ),
         limits=judge_limits(config.limits, values),
         trace=trace,
-        warnings=tuple(warnings(config)),
+        warnings=(*rule_warnings(config, features), *warnings(config)),
         seconds=seconds,
         steps=config.solver.steps,
         made_by=made_by(config),
     )
+
+
+def rule_warnings(config: Config, features: tuple[FeatureReport, ...]) -> list[str]:
+    """What of the mask rule is left undone."""
+    contacts = config.process.corner_contacts == "forbid"
+    return [
+        f"mask {number} breaks the rule: {found.breaches} pixels and, where forbidden, "
+        f"{found.corner_contacts if contacts else 0} corner contacts; give the search more blocks"
+        for number, found in enumerate(features, start=1)
+        if not found.keeps_rule(contacts_forbidden=contacts)
+    ]
 
 
 def mask_of_phase(phase: Float[np.ndarray, "y x"], config: Config) -> Mask:
@@ -124,12 +221,14 @@ def mask_of_phase(phase: Float[np.ndarray, "y x"], config: Config) -> Mask:
         return Mask(phase=turned, height=turned * per_radian, levels=None, layers=None)
     with jax.enable_x64(True):
         levels = np.asarray(nearest_level(jnp.asarray(turned), count)).astype(np.uint8)
-    return Mask(
-        phase=turned,
-        height=levels * (2 * np.pi / count * per_radian),
-        levels=levels,
-        layers=layers_of(levels, count),
-    )
+    return Mask(phase=turned, **relief(levels, config))
+
+
+def relief(levels: UInt8[np.ndarray, "y x"], config: Config) -> dict[str, Any]:
+    """Levels, mask layers and height [m] of a relief."""
+    count = config.element.levels
+    height = levels * (2 * np.pi / count * derived.phase_height(config))
+    return {"levels": levels, "layers": layers_of(levels, count), "height": height}
 
 
 def mask_as_given(phase: Float[np.ndarray, "y x"], config: Config) -> Mask:
@@ -161,24 +260,25 @@ def order_powers(mask: Mask, config: Config, errors: Errors) -> OrderTable:
 
 
 def scores_of(table: OrderTable, config: Config) -> dict[str, float | None]:
-    """All scores of an order table by name; None where a score does not apply."""
+    """All scores of an order table by name; None where one does not apply, as without light."""
     with jax.enable_x64(True):
         found: Scores = scores(jnp.asarray(table.power), wanted_of(config))
     values: dict[str, float | None] = {
-        name: float(value) for name, value in found._asdict().items()
+        name: float(value) if np.isfinite(value) else None
+        for name, value in found._asdict().items()
     }
     values["position_error"] = position_error(config, build(config))
     return values
 
 
 def trace_of(found: Found, steps: int) -> Trace:
-    """The trace of the start that won."""
-    looks = found.trace.loss.shape[1]
+    """The trace of the start that won; looks that were not taken are left out."""
+    rows = np.flatnonzero(np.isfinite(found.trace.loss[found.start]))
     return Trace(
-        step=np.minimum((np.arange(looks) + 1) * STRIDE, steps),
-        loss=found.trace.loss[found.start],
-        efficiency=found.trace.efficiency[found.start],
-        uniformity_error=found.trace.uniformity_error[found.start],
+        step=np.minimum((rows + 1) * STRIDE, steps),
+        loss=found.trace.loss[found.start][rows],
+        efficiency=found.trace.efficiency[found.start][rows],
+        uniformity_error=found.trace.uniformity_error[found.start][rows],
     )
 
 

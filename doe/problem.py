@@ -6,12 +6,13 @@ from typing import NamedTuple
 import jax
 import jax.numpy as jnp
 import numpy as np
-from jaxtyping import Array, Complex, Float
+from jaxtyping import Array, Complex, Float, Int
 
 from doe.config import derived
 from doe.config.made_part import Errors
 from doe.config.schema import Config
 from doe.fabrication.as_made import made_phase
+from doe.fabrication.blocks import block_centres
 from doe.fabrication.makeable import freezing, makeable
 from doe.metrics import Range, Scores, Wanted, merit, range_of, scores
 from doe.optics.orders import amplitudes, basis, order_table
@@ -42,7 +43,12 @@ class Problem:
     zero_cap: Float[Array, ""]  # of an unwanted zero order, over the mean spot; inf = free
     wanted: Wanted
     limits: Range
+    centre_y: Int[Array, " y"]  # the pixel whose phase stands for each pixel's block
+    centre_x: Int[Array, " x"]
+    zero_row: int = field(metadata={"static": True})  # where the zero order stands in `share`
+    zero_column: int = field(metadata={"static": True})
     levels: int = field(metadata={"static": True})
+    is_ruled: bool = field(metadata={"static": True})  # blocks are larger than a pixel
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -53,7 +59,8 @@ class Problem:
         self, phase: Float[Array, "y x"], fraction: Float[Array, ""], errors: Errors = DRAWN
     ) -> Complex[Array, "order_y order_x"]:
         """Amplitudes of the orders of a design on its way to the levels, made with `errors`."""
-        made = made_phase(freezing(phase, self.levels, fraction), errors)
+        drawn = freezing(self.on_blocks(phase), self.levels, fraction)
+        made = made_phase(drawn, errors)
         return amplitudes(phasor(made), self.basis_y, self.basis_x)
 
     def loss(
@@ -73,12 +80,18 @@ class Problem:
     def zero_to_mean(
         self, power: Float[Array, "order_y order_x"], efficiency: Float[Array, ""]
     ) -> Float[Array, ""]:
-        """Power of the zero order, which the bases always hold last, over that of the mean spot."""
-        return power[-1, -1] * (self.share > 0).sum() / efficiency
+        """Power of the zero order over that of the mean spot."""
+        return power[self.zero_row, self.zero_column] * (self.share > 0).sum() / efficiency
 
     def drawn(self, phase: Float[Array, "y x"]) -> Float[Array, "y x"]:
         """The phase [rad] that the process makes of a design."""
-        return makeable(phase, self.levels)
+        return makeable(self.on_blocks(phase), self.levels)
+
+    def on_blocks(self, phase: Float[Array, "y x"]) -> Float[Array, "y x"]:
+        """The phase made constant on blocks that keep the mask rule; itself without a rule."""
+        if not self.is_ruled:
+            return phase
+        return phase[self.centre_y[:, None], self.centre_x[None, :]]
 
     def judge(self, phase: Float[Array, "y x"]) -> Judged:
         """Merit and scores of a design as drawn, from its whole order table."""
@@ -115,30 +128,37 @@ def problem_of(config: Config) -> Problem:
     """The arrays of a job, in float32."""
     target = build(config)
     rows, columns = config.element.pixels
-    # The zero order stands last on both axes, wanted or not, so that its power is always at hand.
-    orders_y = np.append(np.setdiff1d(target.m_y, 0), 0)
-    orders_x = np.append(np.setdiff1d(target.m_x, 0), 0)
+    # The zero order is always among them, wanted or not, so that its power is at hand.
+    orders_y, orders_x = np.union1d(target.m_y, 0), np.union1d(target.m_x, 0)
     share = np.zeros((len(orders_y), len(orders_x)))
-    place_y = {int(m): i for i, m in enumerate(orders_y)}
-    place_x = {int(m): i for i, m in enumerate(orders_x)}
-    for m_y, m_x, part in zip(target.m_y, target.m_x, target.share, strict=True):
-        share[place_y[int(m_y)], place_x[int(m_x)]] = part
+    share[np.searchsorted(orders_y, target.m_y), np.searchsorted(orders_x, target.m_x)] = (
+        target.share
+    )
+    zero_row, zero_column = int(np.searchsorted(orders_y, 0)), int(np.searchsorted(orders_x, 0))
+    feature, gap = derived.rule_pixels(config)
+    block = [max(pair) for pair in zip(feature, gap, strict=True)]
     return Problem(
         basis_y=jnp.asarray(basis(orders_y, rows), jnp.complex64),
         basis_x=jnp.asarray(basis(orders_x, columns), jnp.complex64),
         share=jnp.asarray(share, jnp.float32),
-        zero_cap=jnp.float32(zero_cap(config, zero_is_wanted=share[-1, -1] > 0)),
+        zero_cap=jnp.float32(zero_cap(config)),
         wanted=wanted_of(config),
         limits=range_of(config.limits),
+        centre_y=jnp.asarray(block_centres(rows, block[0])),
+        centre_x=jnp.asarray(block_centres(columns, block[1])),
+        zero_row=zero_row,
+        zero_column=zero_column,
         levels=config.element.levels,
+        is_ruled=config.element.levels > 0 and max(block) > 1,
     )
 
 
-def zero_cap(config: Config, *, zero_is_wanted: bool) -> float:
+def zero_cap(config: Config) -> float:
     """The most an unwanted zero order may have, over the mean spot; inf where it is free."""
-    if zero_is_wanted:
+    target = build(config)
+    if np.any((target.m_y == 0) & (target.m_x == 0)):
         return np.inf
-    spots = len(build(config).share)
+    spots = len(target.share)
     caps = [
         one.value * (spots if name == "zero_order" else 1)
         for name, one in config.limits.items()

@@ -31,6 +31,10 @@ class FeatureReport:
     corner_contacts: int
     edge_length: int  # pixel sides between glass and gap in one cell
 
+    def keeps_rule(self, *, contacts_forbidden: bool) -> bool:
+        """Whether the layer can be made under the rule."""
+        return self.breaches == 0 and not (contacts_forbidden and self.corner_contacts)
+
 
 @dataclass(frozen=True)
 class OrderTable:
@@ -92,8 +96,10 @@ class Result:
 
     @property
     def status(self) -> Status:
-        """Whether the drawn mask keeps every stated limit."""
-        return status_of(self.limits)
+        """Whether the drawn mask keeps every stated limit, and its layers the mask rule."""
+        contacts = self.config.process.corner_contacts == "forbid"
+        kept = all(found.keeps_rule(contacts_forbidden=contacts) for found in self.features)
+        return status_of(self.limits) if kept else "missed"
 
 
 def status_of(limits: tuple[LimitVerdict, ...]) -> Status:

@@ -32,5 +32,5 @@ def freezing(
     share = jnp.clip((fraction - FREE_UNTIL) / (SETTLED_FROM - FREE_UNTIL), 0, 1)
     step = 2 * jnp.pi / levels
     rest = jnp.round(phase / step) * step - phase
-    is_frozen = jnp.abs(rest) <= share * step / 2
+    is_frozen = (jnp.abs(rest) <= share * step / 2) | (share >= 1)
     return jnp.where(is_frozen, lax.stop_gradient(phase + rest), phase)

@@ -1,21 +1,26 @@
 """The one loop of all methods: starts, chunks, best so far, trace, checkpoints and stopping."""
 
-from collections.abc import Callable
 from functools import partial
 from typing import Any, NamedTuple
 
 import jax
 import jax.numpy as jnp
 import numpy as np
-from jaxtyping import Array, Float, Int, PRNGKeyArray
+from jaxtyping import Array, Complex, Float, Int, Key, PRNGKeyArray
+from numpy.typing import NDArray
 
-from doe.errors import Fault, NumericalError
+from doe.errors import Fault, FileError, NumericalError
 from doe.problem import Problem
+from doe.solvers.hooks import Hooks
 from doe.solvers.method import Method, State, Tick
+from doe.solvers.start import Starts, first_phase
 
 STRIDE = 10  # steps from one look at the drawn design to the next
 LOOKS = 5  # looks in one compiled chunk; between chunks a run can be saved and stopped
 PIXELS_AT_ONCE = 2**22  # starts run together up to this many pixels
+
+
+Keys = Key[Array, " start"]
 
 
 class Best(NamedTuple):
@@ -42,7 +47,10 @@ class Carry(NamedTuple):
 
 
 class Found(NamedTuple):
-    """The best design over all starts, and what was seen on the way (rows: start, look)."""
+    """The best design over all starts, and what was seen on the way (rows: start, look).
+
+    Looks that were not taken are NaN.
+    """
 
     phase: Float[np.ndarray, "y x"]
     start: int
@@ -51,24 +59,14 @@ class Found(NamedTuple):
     stopped: bool
 
 
-class Hooks(NamedTuple):
-    """What the driver asks of its caller, who alone touches files and the screen."""
-
-    saved: tuple[dict[str, Any], list[np.ndarray[Any, Any]]] | None
-    save: Callable[[dict[str, Any], list[np.ndarray[Any, Any]]], None]
-    save_is_due: Callable[[], bool]
-    stop: Callable[[], bool]
-    report: Callable[[int, float, float], None]  # steps done of all, efficiency, uniformity error
-
-
 class Run(NamedTuple):
     """Where a whole run stands: what a checkpoint holds."""
 
     batch: int
     look: int
-    leader_merit: np.ndarray[Any, Any]
-    leader_phase: np.ndarray[Any, Any]
-    leader_place: np.ndarray[Any, Any]  # start, step
+    leader_merit: NDArray[Any]
+    leader_phase: NDArray[Any]
+    leader_place: NDArray[Any]  # start, step
     trace: Look
     carry: Carry
 
@@ -86,10 +84,15 @@ class Plan(NamedTuple):
         """Number of batches."""
         return -(-self.starts // self.batch)
 
-    def keys(self, key: PRNGKeyArray, batch: int) -> PRNGKeyArray:
+    def rows(self, batch: int) -> slice:
+        """The starts of a batch."""
+        return slice(batch * self.batch, min((batch + 1) * self.batch, self.starts))
+
+    def keys(self, key: PRNGKeyArray, batch: int) -> Keys:
         """One key for each start of a batch, whatever the size of the batch."""
-        numbers = jnp.arange(batch * self.batch, min((batch + 1) * self.batch, self.starts))
-        keys: PRNGKeyArray = jax.vmap(partial(jax.random.fold_in, key))(numbers)
+        rows = self.rows(batch)
+        numbers = jnp.arange(rows.start, rows.stop)
+        keys: Keys = jax.vmap(partial(jax.random.fold_in, key))(numbers)
         return keys
 
 
@@ -99,12 +102,15 @@ def plan_of(problem: Problem, starts: int, steps: int) -> Plan:
     return Plan(starts, steps, min(starts, together), -(-steps // STRIDE))
 
 
-def solve(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hooks: Hooks) -> Found:
+def solve(
+    problem: Problem, method: Method, plan: Plan, starts: Starts, key: PRNGKeyArray, hooks: Hooks
+) -> Found:
     """The best makeable design of all starts by the problem's merit.
 
+    starts: amplitudes of the wanted orders, whose sum makes the first phase of each start.
     Error: NumericalError where a loss stops being finite; what was best till then is saved.
     """
-    run = resumed(problem, method, plan, key, hooks)
+    run = resumed(problem, method, plan, starts, hooks)
     while True:
         keys = plan.keys(key, run.batch)
         while run.look < plan.looks:
@@ -112,20 +118,19 @@ def solve(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hooks
                 hooks.save(*packed(run))
                 return found(lead(run, plan), stopped=True)
             run = advanced(problem, method, plan, keys, run)
-            finite_or_stop(run, hooks)
+            finite_or_stop(run, plan, hooks)
             tell(run, plan, hooks)
             if hooks.save_is_due():
                 hooks.save(*packed(run))
         run = lead(run, plan)
         if run.batch + 1 == plan.batches:
             return found(run, stopped=False)
-        next_keys = plan.keys(key, run.batch + 1)
-        run = run._replace(
-            batch=run.batch + 1, look=0, carry=begin(problem, next_keys, method=method)
-        )
+        batch = run.batch + 1
+        carry = begin(problem, starts[plan.rows(batch)], method=method)
+        run = run._replace(batch=batch, look=0, carry=carry)
 
 
-def resumed(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hooks: Hooks) -> Run:
+def resumed(problem: Problem, method: Method, plan: Plan, starts: Starts, hooks: Hooks) -> Run:
     """The run a checkpoint holds, or a fresh one."""
     batch = int(hooks.saved[0]["batch"]) if hooks.saved else 0
     fresh = Run(
@@ -134,13 +139,21 @@ def resumed(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hoo
         leader_merit=np.array(-np.inf, np.float32),
         leader_phase=np.zeros(problem.shape, np.float32),
         leader_place=np.zeros(2, np.int64),
-        trace=Look(*(np.zeros((plan.starts, plan.looks), np.float32) for _ in Look._fields)),
-        carry=begin(problem, plan.keys(key, batch), method=method),
+        trace=Look(*(np.full((plan.starts, plan.looks), np.nan, np.float32) for _ in Look._fields)),
+        carry=begin(problem, starts[plan.rows(batch)], method=method),
     )
     if hooks.saved is None:
         return fresh
     _, arrays = hooks.saved
     leaves, shape = jax.tree.flatten(fresh)
+    if [np.shape(leaf) for leaf in leaves] != [array.shape for array in arrays]:
+        raise FileError(
+            Fault(
+                "the checkpoint holds other arrays than this version of the method",
+                "a checkpoint of this version",
+                "run without --resume into another --out",
+            )
+        )
     kept = [
         type(leaf)(array) if isinstance(leaf, int) else array
         for leaf, array in zip(leaves, arrays, strict=True)
@@ -149,22 +162,22 @@ def resumed(problem: Problem, method: Method, plan: Plan, key: PRNGKeyArray, hoo
     return run
 
 
-def packed(run: Run) -> tuple[dict[str, Any], list[np.ndarray[Any, Any]]]:
+def packed(run: Run) -> tuple[dict[str, Any], list[NDArray[Any]]]:
     """A run as facts and arrays for a checkpoint."""
     return {"batch": run.batch, "look": run.look}, [np.asarray(x) for x in jax.tree.leaves(run)]
 
 
 @partial(jax.jit, static_argnames="method")
-def begin(problem: Problem, keys: PRNGKeyArray, *, method: Method) -> Carry:
+def begin(problem: Problem, starts: Starts, *, method: Method) -> Carry:
     """First states of a batch, the starts themselves counting as designs."""
 
-    def one(key: PRNGKeyArray) -> Carry:
-        state = method.init(problem, method.start(problem, key))
+    def one(orders: Complex[Array, "order_y order_x"]) -> Carry:
+        state = method.init(problem, first_phase(problem, orders))
         phase = method.design(state)
         judged = problem.judge(phase)
         return Carry(state, Best(judged.merit, phase, jnp.int32(0)))
 
-    carry: Carry = jax.lax.map(one, keys)
+    carry: Carry = jax.lax.map(one, starts)
     return carry
 
 
@@ -172,7 +185,7 @@ def begin(problem: Problem, keys: PRNGKeyArray, *, method: Method) -> Carry:
 def advance(
     problem: Problem,
     carry: Carry,
-    keys: PRNGKeyArray,
+    keys: Keys,
     first: Int[Array, ""],
     *,
     method: Method,
@@ -202,13 +215,13 @@ def advance(
     return jax.vmap(one)(carry, keys)
 
 
-def advanced(problem: Problem, method: Method, plan: Plan, keys: PRNGKeyArray, run: Run) -> Run:
+def advanced(problem: Problem, method: Method, plan: Plan, keys: Keys, run: Run) -> Run:
     """The run after one more chunk."""
     looks = min(LOOKS, plan.looks - run.look)
     carry, seen = advance(
         problem, run.carry, keys, jnp.int32(run.look), method=method, steps=plan.steps, looks=looks
     )
-    rows = slice(run.batch * plan.batch, run.batch * plan.batch + len(keys))
+    rows = plan.rows(run.batch)
     columns = slice(run.look, run.look + looks)
     for kept, new in zip(run.trace, seen, strict=True):
         kept[rows, columns] = np.asarray(new)
@@ -234,14 +247,14 @@ def found(run: Run, *, stopped: bool) -> Found:
     return Found(run.leader_phase, start, step, run.trace, stopped)
 
 
-def finite_or_stop(run: Run, hooks: Hooks) -> None:
-    """Raise where a loss is no longer finite, after saving what was best till then."""
-    last = run.trace.loss[:, : run.look]
-    if np.all(np.isfinite(last)):
+def finite_or_stop(run: Run, plan: Plan, hooks: Hooks) -> None:
+    """Raise where a loss is no longer finite, with what was best till then."""
+    seen = run.trace.loss[plan.rows(run.batch), : run.look]
+    if np.all(np.isfinite(seen)):
         return
-    step = int(np.argmax(~np.isfinite(last).all(axis=0)) + 1) * STRIDE
+    step = int(np.argmax(~np.isfinite(seen).all(axis=0)) + 1) * STRIDE
     hooks.save(*packed(run))
-    raise NumericalError(
+    error = NumericalError(
         Fault(
             f"the loss stopped being finite by step {step}; the best design till then is saved",
             "a finite loss",
@@ -249,16 +262,19 @@ def finite_or_stop(run: Run, hooks: Hooks) -> None:
             key="solver",
         )
     )
+    error.best = found(lead(run, plan), stopped=True)
+    raise error
 
 
 def tell(run: Run, plan: Plan, hooks: Hooks) -> None:
     """Report the steps done and the best efficiency and uniformity error of this look."""
-    rows = slice(run.batch * plan.batch, min((run.batch + 1) * plan.batch, plan.starts))
+    rows = plan.rows(run.batch)
     loss = run.trace.loss[rows, run.look - 1]
     winner = rows.start + int(np.argmin(loss))
-    done = rows.start * plan.steps + min(run.look * STRIDE, plan.steps) * (rows.stop - rows.start)
+    part = run.look / plan.looks * (rows.stop - rows.start)
     hooks.report(
-        done,
+        "shaping the phase",
+        (rows.start + part) / plan.starts,
         float(run.trace.efficiency[winner, run.look - 1]),
         float(run.trace.uniformity_error[winner, run.look - 1]),
     )

@@ -8,7 +8,7 @@ from doe.optics.orders import amplitudes, mask_field
 from doe.optics.phasor import phasor
 from doe.problem import Problem
 from doe.solvers.method import Method, Tick
-from doe.solvers.start import superposition, unit
+from doe.solvers.start import unit
 
 
 def gerchberg_saxton(options: GerchbergSaxton) -> Method:
@@ -25,4 +25,4 @@ def gerchberg_saxton(options: GerchbergSaxton) -> Method:
         orders = jnp.sqrt(problem.share) * unit(got)
         return unit(mask_field(orders, problem.basis_y, problem.basis_x))
 
-    return Method(superposition, init, step, design=jnp.angle)
+    return Method(init, step, design=jnp.angle)

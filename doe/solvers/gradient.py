@@ -10,7 +10,6 @@ from jaxtyping import Array, Float
 from doe.config.solver import Gradient
 from doe.problem import Problem
 from doe.solvers.method import Method, Tick
-from doe.solvers.start import order_phases
 
 LAST_RATE = 0.1  # of the learning rate, reached on a cosine at the end of the budget
 
@@ -23,7 +22,7 @@ class GradientState(NamedTuple):
 
 
 def gradient(options: Gradient) -> Method:
-    """Adam on the phase of each pixel, from the fixed point in the order phases.
+    """Adam on the phase of each pixel.
 
     Source: Kingma and Ba, ICLR (2015) (from memory).
     """
@@ -41,4 +40,4 @@ def gradient(options: Gradient) -> Method:
         rate = options.learning_rate * (LAST_RATE + (1 - LAST_RATE) * decay)
         return GradientState(state.phase - rate * direction, moments)
 
-    return Method(order_phases, init, step, design=lambda state: state.phase)
+    return Method(init, step, design=lambda state: state.phase)

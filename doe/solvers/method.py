@@ -19,9 +19,8 @@ class Tick(NamedTuple):
 
 
 class Method(NamedTuple):
-    """A way to design: `start` makes a first phase, `init` a state, `step` the next one."""
+    """A way to design: `init` makes a state of a first phase, `step` the next state."""
 
-    start: Callable[[Problem, PRNGKeyArray], Float[Array, "y x"]]
     init: Callable[[Problem, Float[Array, "y x"]], State]
     step: Callable[[Problem, State, Tick], State]
     design: Callable[[State], Float[Array, "y x"]]

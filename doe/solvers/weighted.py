@@ -10,7 +10,7 @@ from doe.optics.orders import amplitudes, mask_field
 from doe.optics.phasor import phasor
 from doe.problem import Problem
 from doe.solvers.method import Method, Tick
-from doe.solvers.start import superposition, unit
+from doe.solvers.start import unit
 
 
 class WeightedState(NamedTuple):
@@ -39,4 +39,4 @@ def weighted(options: Weighted) -> Method:
         near = unit(mask_field(weight * unit(got), problem.basis_y, problem.basis_x))
         return WeightedState(near, weight)
 
-    return Method(superposition, init, step, design=lambda state: jnp.angle(state.near))
+    return Method(init, step, design=lambda state: jnp.angle(state.near))
