@@ -76,9 +76,10 @@ class BudgetError(DoeError):
 
 
 class NumericalError(DoeError):
-    """A number stopped being finite."""
+    """A number stopped being finite; `best` is the best design till then, where there is one."""
 
     exit_code = 8
+    best: Any = None
 
 
 def nearest(name: str, known: Iterable[str]) -> str | None:

@@ -4,12 +4,13 @@ import fcntl
 import hashlib
 import os
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 from doe.errors import ConfigError, DiskError, DoeError, Fault, OutputError
 
 LONGEST_NAME = 255  # bytes, of common file systems
+LONGEST_PATH = 4000
 
 
 @contextmanager
@@ -39,7 +40,9 @@ def check_path(path: Path) -> None:
     """Refuse an output path that is no folder and cannot become one."""
     text = str(path)
     problem = None
-    if "\0" in text or not text.isprintable():
+    if len(os.fsencode(path)) > LONGEST_PATH:
+        problem = f"the path is longer than {LONGEST_PATH} bytes"
+    elif "\0" in text or not text.isprintable():
         problem = "the path holds characters that cannot be printed"
     elif any(len(os.fsencode(part)) > LONGEST_NAME for part in path.parts):
         problem = f"a name in the path is longer than {LONGEST_NAME} bytes"
@@ -47,7 +50,7 @@ def check_path(path: Path) -> None:
         problem = "this, or a folder above it, is a file and not a folder"
     if problem:
         allowed = "the path of a folder, there already or not"
-        raise ConfigError(Fault(problem, allowed, "give another --out", file=ascii(text)[1:-1]))
+        raise ConfigError(Fault(problem, allowed, "give another --out", file=ascii(text)[1:200]))
 
 
 def lock(descriptor: int, path: Path) -> None:
@@ -75,7 +78,7 @@ def probe(path: Path) -> None:
 
 def refuse_existing(path: Path, fix: str) -> None:
     """Refuse to write over a file that is there."""
-    if path.exists() or path.is_symlink():
+    if os.path.lexists(path):
         raise OutputError(
             Fault("this file is already there", "nothing is overwritten", fix, file=str(path))
         )
@@ -95,7 +98,8 @@ def write(path: Path, data: bytes) -> None:
                 os.fsync(file.fileno())
             os.replace(part, path)
         except BaseException:
-            part.unlink(missing_ok=True)
+            with suppress(OSError):  # the first refusal is the one to tell
+                part.unlink(missing_ok=True)
             raise
         sync_folder(path.parent)
     except OSError as error:

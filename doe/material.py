@@ -4,7 +4,7 @@ import math
 from collections.abc import Callable
 from dataclasses import dataclass
 
-from doe.units import MICRO
+from doe.units import MICRO, micrometres
 
 
 @dataclass(frozen=True)
@@ -30,8 +30,8 @@ def sellmeier(*terms: tuple[float, float]) -> Callable[[float], float]:
 MATERIALS = {
     "fused silica": Material(
         sellmeier((0.6961663, 0.0684043), (0.4079426, 0.1162414), (0.8974794, 9.896161)),
-        shortest=0.21 * MICRO,
-        longest=3.71 * MICRO,
+        shortest=micrometres(0.21),
+        longest=micrometres(3.71),
         source="Malitson, J. Opt. Soc. Am. 55, 1205 (1965)",
     ),
 }

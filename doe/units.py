@@ -81,6 +81,11 @@ def percent(value: float, digits: int = 2) -> str:
     return f"{value * 100:.{digits}f} %"
 
 
+def micrometres(value: float) -> float:
+    """Micrometres in metres, rounded once."""
+    return float(Decimal(repr(value)) * Decimal(repr(MICRO)))
+
+
 def in_nm(value: float) -> int:
     """Metres to whole nanometres, the database unit of layouts."""
     return round(value / NANO)

@@ -3,6 +3,7 @@
 import json
 import os
 import sys
+from typing import Any
 
 import click
 
@@ -12,10 +13,31 @@ from doe.cli.evaluate import evaluate
 from doe.cli.export import export
 from doe.cli.new import new
 from doe.cli.run import run
+from doe.cli.signoff import signoff
 from doe.errors import DoeError, Fault
 
 
-@click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+class Commands(click.Group):
+    """The commands, which end well when the reader of their output has gone."""
+
+    def invoke(self, ctx: click.Context) -> Any:
+        """Run a command; a reader that has gone is no fault, a full disk behind stdout is."""
+        try:
+            status = super().invoke(ctx)
+            sys.stdout.flush()
+        except OSError as error:
+            # Python must not try to write again at exit.
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            if isinstance(error, BrokenPipeError):
+                return 0
+            print(f"error: stdout: cannot be written: {error.strerror}", file=sys.stderr)
+            return 6
+        return status
+
+
+@click.group(
+    cls=Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100}
+)
 @click.version_option(package_name="doe")
 def doe() -> None:
     """Design diffractive optical elements that can be made.
@@ -29,7 +51,7 @@ def doe() -> None:
     """
 
 
-for command in (new, check, run, compare, evaluate, export):
+for command in (new, check, run, compare, evaluate, export, signoff):
     doe.add_command(command)
 
 
@@ -47,10 +69,6 @@ def main() -> None:
         status = complain(wrong, lines, error.exit_code)
     except click.Abort:
         status = 130
-    except BrokenPipeError:
-        # The reader has gone; nothing is left to tell, and Python must not try at exit.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        status = 0
     sys.exit(status if isinstance(status, int) else 0)
 
 

@@ -4,7 +4,7 @@ from pathlib import Path
 
 import click
 
-from doe.cli.common import CONFIG, console, output_options, print_json, table
+from doe.cli.common import CONFIG, output_options, print_json, say, table
 
 
 @click.command(epilog="Example: doe check configs/needle_mill.toml")
@@ -34,9 +34,8 @@ def check(config: Path, as_json: bool, quiet: bool, no_color: bool) -> int:
         return int(not found.feasible)
     rows = [[fact.label, fact.text] for fact in found.facts]
     table(f"{job.title}: what this job means", ["quantity", "value"], rows, no_color=no_color)
-    screen = console(no_color=no_color)
     for note in found.verdicts:
-        screen.print(note)
+        say(note, no_color=no_color)
     for text in found.warnings:
-        screen.print(f"[yellow]note[/]: {text}")
+        say(f"[yellow]note[/]: {text}", no_color=no_color)
     return int(not found.feasible)

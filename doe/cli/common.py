@@ -3,7 +3,8 @@
 import json
 import sys
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -49,15 +50,19 @@ def table(title: str, columns: list[str], rows: list[list[str]], *, no_color: bo
         grid.add_column(column, justify="left" if number == 0 else "right")
     for row in rows:
         grid.add_row(*row)
-    console(no_color=no_color).print(grid)
+    say(grid, no_color=no_color)
 
 
-def console(*, no_color: bool) -> Any:
-    """A console on stdout, as wide as a page where stdout is no terminal."""
+def say(content: Any, *, no_color: bool) -> None:
+    """Text with marks, or a table, on stdout; as wide as a page where stdout is no terminal."""
     from rich.console import Console
 
     width = None if sys.stdout.isatty() else 100
-    return Console(no_color=no_color or None, width=width, highlight=False, soft_wrap=True)
+    screen = Console(no_color=no_color or None, width=width, highlight=False, soft_wrap=True)
+    # Written by ourselves: the library ends the process by its own rules when a reader has gone.
+    with screen.capture() as captured:
+        screen.print(content)
+    sys.stdout.write(captured.get())
 
 
 def verdict_word(met: bool | None) -> str:
@@ -120,6 +125,8 @@ def fraction_reached(result: "Result") -> float | None:
 
 def print_result(result: "Result", *, no_color: bool) -> None:
     """Verdict, scores, mask and warnings of one design for a tired reader."""
+    from rich.markup import escape
+
     rows = [
         [v.name, readable_limit(v), readable(v.name, v.value), verdict_word(v.met)]
         for v in result.limits
@@ -129,30 +136,36 @@ def print_result(result: "Result", *, no_color: bool) -> None:
         table(title, ["limit", "asked", "drawn mask", "verdict"], rows, no_color=no_color)
     rows = [[name, readable(name, value)] for name, value in result.scores.items()]
     table("all scores of the drawn mask", ["score", "value"], rows, no_color=no_color)
-    screen = console(no_color=no_color)
     bound, reached = result.bound, fraction_reached(result)
-    screen.print(
+    tell = partial(say, no_color=no_color)
+    tell(
         f"bound at continuous phase ({bound.kind}): {bound.efficiency:.4f}, of which "
         f"{reached:.1%} is reached; {result.config.element.levels or 'continuous'} levels "
         f"usually leave {bound.levels_factor:.3f}"
     )
-    print_layers(result, screen)
+    for line in layer_lines(result):
+        tell(line)
     for text in result.warnings:
-        screen.print(f"[yellow]note[/]: {text}")
+        tell(f"[yellow]note[/]: {escape(text)}")
 
 
-def print_layers(result: "Result", screen: Any) -> None:
+def layer_lines(result: "Result") -> Iterator[str]:
     """Depth, rule and edges of each mask layer."""
     from doe import units
     from doe.config import derived
 
     depths = derived.layer_depths(result.config)
     for number, (depth, found) in enumerate(zip(depths, result.features, strict=False), start=1):
-        screen.print(
-            f"mask {number}: etch {depth / units.NANO:.1f} nm, rule {list(found.rule)} px feature "
-            f"and {list(found.gap_rule)} px gap: {found.breaches} breaches, "
+        yield (
+            f"mask {number}: etch {depth / units.NANO:.1f} nm; rule of {pair(found.rule)} pixels "
+            f"for features and {pair(found.gap_rule)} for gaps: {found.breaches} breaches, "
             f"{found.corner_contacts} corner contacts, {found.edge_length} edges"
         )
+
+
+def pair(sizes: tuple[int, int]) -> str:
+    """A pair (y, x) in words."""
+    return f"{sizes[0]} x {sizes[1]}"
 
 
 class Clock:

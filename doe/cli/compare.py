@@ -25,8 +25,10 @@ def compare(
 ) -> int:
     """Design the job in CONFIG by every method it lists.
 
-    All get the same levels and mask rule, number of starts and steps. Leaves one record a method in
-    OUT/METHOD, comparison.csv and comparison.png. The exit status is that of the best record.
+    All get the same levels, mask rule, number of starts and steps. Each method is shown twice: as
+    published, from its own random starts and without the exact search; and refined, from the shared
+    starts and with it. Leaves records in OUT/METHOD (refined) and OUT/METHOD-as-published,
+    comparison.csv and comparison.png. The exit status is that of the best record.
     """
     from doe import files
     from doe.config.load import load
@@ -37,14 +39,19 @@ def compare(
     with files.output_folder(folder):
         if not resume:
             files.refuse_existing(folder / "comparison.csv", "give --resume, or another --out")
-        results = [
-            one_method(folder / method, job, text, method, resume=resume, quiet=quiet)
+        ways = [False, True] if job.solver.refine else [False]
+        results = {
+            (method, refined): one_method(
+                folder, (job, text), method, refined=refined, resume=resume, quiet=quiet
+            )
+            for refined in ways
             for method in job.solver.methods
-        ]
-        rows = [row_of(result) for result in results]
+        }
+        rows = [row_of(result, refined) for (_, refined), result in results.items()]
         files.write(folder / "comparison.csv", csv_of(rows))
         files.write(folder / "comparison.png", draw(results))
-    best = max(results, key=rank)
+    leader = max(results, key=lambda way: rank(results[way]))
+    best, place = results[leader], folder_of(folder, *leader)
     if as_json:
         print_json(
             {
@@ -52,29 +59,33 @@ def compare(
                 "warnings": list(best.warnings),
                 "limits": [vars(limit) for limit in best.limits],
                 "methods": rows,
-                "record": str(folder / best.method / "record.h5"),
+                "record": str(place / "record.h5"),
             }
         )
     else:
         show(rows, job.title, no_color=no_color)
-        print(f"best: {best.method} ({best.status}); records in {folder}")
+        print(f"best: {place / 'record.h5'} ({best.status})")
     return int(best.status == "missed")
 
 
+def folder_of(folder: Path, method: str, refined: bool) -> Path:
+    """Where the record of a method lies."""
+    return folder / (method if refined else f"{method}-as-published")
+
+
 def one_method(
-    folder: Path, job: Any, text: str, method: str, *, resume: bool, quiet: bool
+    folder: Path, job: Any, method: str, *, refined: bool, resume: bool, quiet: bool
 ) -> "Result":
     """The record of one method, designed unless it is there already."""
     from doe import files
-    from doe.cli.session import RECORD, design_into
-    from doe.store import read
+    from doe.cli.session import RECORD, checkpoint_facts, design_into, finished
 
-    with files.output_folder(folder):
-        record = folder / RECORD
+    with files.output_folder(folder_of(folder, method, refined)) as place:
+        record = place / RECORD
         if resume and record.exists():
-            return read.read(record)
+            return finished(record, checkpoint_facts(job[0], method))
         files.refuse_existing(record, "give --resume, or another --out")
-        return design_into(folder, job, text, method, resume=resume, quiet=quiet)
+        return design_into(place, job, method, resume=resume, quiet=quiet, as_published=not refined)
 
 
 def rank(result: "Result") -> tuple[bool, float, float]:
@@ -87,11 +98,11 @@ def rank(result: "Result") -> tuple[bool, float, float]:
     return (result.status == "met", -float(sum(missed)), result.scores["efficiency"] or 0.0)
 
 
-def row_of(result: "Result") -> dict[str, Any]:
+def row_of(result: "Result", refined: bool) -> dict[str, Any]:
     """One line of the comparison."""
     return {
         "name": result.method,
-        "refined": False,
+        "refined": refined,
         "efficiency": result.scores["efficiency"],
         "uniformity_error": result.scores["uniformity_error"],
         "seconds": result.seconds,
@@ -113,6 +124,7 @@ def show(rows: list[dict[str, Any]], title: str, *, no_color: bool) -> None:
     lines = [
         [
             row["name"],
+            "refined" if row["refined"] else "as published",
             f"{row['efficiency']:.2%}",
             f"{row['uniformity_error']:.2%}",
             f"{row['seconds']:.1f} s",
@@ -120,5 +132,5 @@ def show(rows: list[dict[str, Any]], title: str, *, no_color: bool) -> None:
         ]
         for row in rows
     ]
-    columns = ["method", "efficiency", "uniformity error", "time", "steps"]
-    table(f"{title}: drawn masks as each method leaves them", columns, lines, no_color=no_color)
+    columns = ["method", "way", "efficiency", "uniformity error", "time", "steps"]
+    table(f"{title}: the drawn masks", columns, lines, no_color=no_color)

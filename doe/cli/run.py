@@ -31,26 +31,26 @@ def run(
 ) -> int:
     """Design the job in CONFIG and save the record.
 
-    Uses the first method the config lists, from many starts; the best by efficiency, less ten times
-    what the limits are missed by, is kept. Leaves record.h5, trace.jsonl and overview.png.
+    Uses the first method the config lists, from many starts, and then searches the levels exactly.
+    What reaches the limits is kept first, then what has the most light. Leaves record.h5,
+    trace.jsonl and overview.png.
     """
     from doe import files
-    from doe.cli.session import RECORD, design_into
+    from doe.cli.session import RECORD, checkpoint_facts, design_into, finished
     from doe.config.load import load, seeded
     from doe.report.overview import draw
-    from doe.store import read
 
     job, text = load(config)
     job = seeded(job, seed)
     folder = out or default_out(config)
     record = folder / RECORD
     with files.output_folder(folder):
+        method = job.solver.methods[0]
         if resume and record.exists():
-            result = read.read(record)
+            result = finished(record, checkpoint_facts(job, method))
         else:
             files.refuse_existing(record, "give --resume to see it, or another --out")
-            method = job.solver.methods[0]
-            result = design_into(folder, job, text, method, resume=resume, quiet=quiet)
+            result = design_into(folder, (job, text), method, resume=resume, quiet=quiet)
             files.write(folder / "overview.png", draw(result))
     if as_json:
         print_json(result_json(result, record))

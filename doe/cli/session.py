@@ -13,11 +13,13 @@ import click
 
 from doe import files
 from doe.cli.common import Clock
-from doe.errors import Fault, FileError
+from doe.errors import Fault, FileError, NumericalError
 
 if TYPE_CHECKING:
     from doe.config.schema import Config
     from doe.result import Result
+
+Job = tuple["Config", str]  # a config and its text as given
 
 CHECKPOINT_SECONDS = 10.0
 PROGRESS_SECONDS = 5.0
@@ -50,7 +52,13 @@ def stoppable() -> Iterator[Stop]:
 
 
 def design_into(
-    folder: Path, config: "Config", text: str, method: str, *, resume: bool, quiet: bool
+    folder: Path,
+    job: Job,
+    method: str,
+    *,
+    resume: bool,
+    quiet: bool,
+    as_published: bool = False,
 ) -> "Result":
     """Design by one method into a locked folder and leave record and trace there.
 
@@ -58,12 +66,14 @@ def design_into(
     stopped, with checkpoint and best design so far saved.
     """
     from doe import pipeline
-    from doe.solvers.driver import Hooks
+    from doe.solvers.hooks import Hooks
     from doe.store import checkpoint, write
 
+    config, text = job
     clock, progress = Clock(CHECKPOINT_SECONDS), Clock(PROGRESS_SECONDS)
-    total = config.solver.starts * config.solver.steps
-    facts = checkpoint_facts(config, method)
+    facts = checkpoint_facts(config, method, as_published=as_published)
+    if not resume:
+        refuse_stopped(folder)
     saved = load_checkpoint(folder, facts) if resume else None
     turn = saved[0]["turn"] + 1 if saved else 0
 
@@ -72,14 +82,21 @@ def design_into(
         checkpoint.write(folder, turn, facts | where, arrays)
         turn += 1
 
-    def report(done: int, efficiency: float, uniformity: float) -> None:
+    def report(stage: str, done: float, efficiency: float, uniformity: float) -> None:
         if not quiet and progress.is_due():
-            line = f"{method}: {done / total:4.0%}  efficiency {efficiency:.4f}"
+            line = f"{method}, {stage}: {done:4.0%}  efficiency {efficiency:.4f}"
             print(f"{line}  uniformity error {uniformity:.2%}", file=sys.stderr)
 
     with stoppable() as stop:
         hooks = Hooks(saved, save, clock.is_due, lambda: bool(stop.signal), report)
-        result, stopped = pipeline.design(config, text, method, hooks)
+        try:
+            result, stopped = pipeline.design(
+                config, text, method, hooks, as_published=as_published
+            )
+        except NumericalError as error:
+            if error.best is not None:
+                write.write(folder / STOPPED, error.best)
+            raise
     if stopped:
         write.write(folder / STOPPED, result)
         tell_stopped(folder)
@@ -91,11 +108,32 @@ def design_into(
     return result
 
 
-def checkpoint_facts(config: "Config", method: str) -> dict[str, Any]:
+def refuse_stopped(folder: Path) -> None:
+    """Refuse to begin anew where a stopped run waits to be gone on with."""
+    from doe.store import checkpoint
+
+    for name in (*checkpoint.NAMES, STOPPED):
+        files.refuse_existing(folder / name, "give --resume to go on with it, or another --out")
+
+
+def finished(record: Path, facts: dict[str, Any]) -> "Result":
+    """The record of a finished run. Error: FileError where it is another job's."""
+    from doe.store import read
+
+    result = read.read(record)
+    same = result.made_by["config_digest"] == facts["config_digest"]
+    if not same or result.method != facts["method"]:
+        raise another_job(record)
+    return result
+
+
+def checkpoint_facts(
+    config: "Config", method: str, *, as_published: bool = False
+) -> dict[str, Any]:
     """What a checkpoint must agree with before a run goes on from it."""
     from doe.config import load
 
-    return {"config_digest": load.digest(config), "method": method}
+    return {"config_digest": load.digest(config), "method": method, "as_published": as_published}
 
 
 def load_checkpoint(folder: Path, facts: dict[str, Any]) -> Any:
@@ -104,15 +142,20 @@ def load_checkpoint(folder: Path, facts: dict[str, Any]) -> Any:
 
     saved = checkpoint.read(folder)
     if saved and {name: saved[0].get(name) for name in facts} != facts:
-        raise FileError(
-            Fault(
-                "the checkpoint belongs to another config or method",
-                "the config the run was started with",
-                "put the config back, or run without --resume into another --out",
-                file=str(folder),
-            )
-        )
+        raise another_job(folder)
     return saved
+
+
+def another_job(place: Path) -> FileError:
+    """The error of a checkpoint or record that another config, seed or method made."""
+    return FileError(
+        Fault(
+            "what is here belongs to another config, seed or method",
+            "the job the run was started with",
+            "put the config back, or run without --resume into another --out",
+            file=str(place),
+        )
+    )
 
 
 def tell_stopped(folder: Path) -> None:

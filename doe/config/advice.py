@@ -6,7 +6,6 @@ from collections.abc import Iterator
 from doe import sampling, units
 from doe.config import derived
 from doe.config.schema import Config
-from doe.config.target import Grid
 
 THIN_FEATURE = 10  # wavelengths; below it thin-element figures are off. Common practice, no source
 THIN_ANGLE = 15 * units.DEGREE  # common practice, no source
@@ -102,17 +101,9 @@ def target_warnings(config: Config) -> Iterator[str]:
 
 def crowding(config: Config) -> Iterator[str]:
     """Spots of a grid closer to one another than the beam resolves."""
-    if not isinstance(config.target, Grid) or config.target.count() == 1:
-        return
-    beam = config.beam
+    beam, spacing = config.beam, derived.spot_spacing(config)
     spread = sampling.divergence(beam.wavelength, beam.diameter, beam.m2)
-    steps = derived.order_steps(config)
-    numbers = config.target.order_steps()
-    counts = [len(axis) for axis in config.target.axes()]
-    spacing = min(
-        step * n for step, n, count in zip(steps, numbers, counts, strict=True) if count > 1
-    )
-    if spacing < CLOSE_SPOTS * spread:
+    if spacing is not None and spacing < CLOSE_SPOTS * spread:
         yield (
             f"the spots lie {spacing / spread:.1f} spot diameters apart, so that they overlap and "
             f"interfere: use a wider beam or a shorter period"

@@ -17,6 +17,7 @@ from doe.errors import listing, nearest
 from doe.material import MATERIALS
 
 MOST_SPOTS = 20_000
+WIDEST_RULE = 16  # pixels; the exact search keeps rows of bits that a wider rule does not fit
 FEWEST_PIXELS = 8  # along an axis that varies
 ON_ORDER = 0.01  # of the order spacing: an angle this close to an order counts as on it
 SAME_PERIOD = 1e-4  # relative: periods are rounded to the nanometre on the mask
@@ -46,8 +47,8 @@ def run(sections: Mapping[str, Any]) -> list[Trouble]:
     return found
 
 
-def material(beam: Beam, material: MaterialTable) -> Iterator[Trouble]:
-    """One of name and index; a known name inside its fit range; an index that bends light."""
+def material(material: MaterialTable) -> Iterator[Trouble]:
+    """One of name and index, a known name, an index that bends light."""
     if (material.name is None) == (material.index is None):
         yield Trouble(
             "material", "give either `name` or `index`", "one of the two", "remove or add one"
@@ -56,14 +57,16 @@ def material(beam: Beam, material: MaterialTable) -> Iterator[Trouble]:
         yield Trouble(
             "material.index", "no usable etch depth", "a real index above 1, up to 6", "check it"
         )
-    if material.name is None:
-        return
-    known = MATERIALS.get(material.name)
-    if known is None:
+    if material.name is not None and material.name not in MATERIALS:
         guess = nearest(material.name, MATERIALS)
         fix = f'did you mean "{guess}"?' if guess else "give `index` instead"
         yield Trouble("material.name", "this material is not known", listing(MATERIALS), fix)
-    elif not known.shortest <= beam.wavelength <= known.longest:
+
+
+def fit_range(beam: Beam, material: MaterialTable) -> Iterator[Trouble]:
+    """A wavelength for which the material's index is known."""
+    known = MATERIALS.get(material.name or "")
+    if known is not None and not known.shortest <= beam.wavelength <= known.longest:
         span = f"{units.length(known.shortest)} to {units.length(known.longest)}"
         problem = f"{units.length(beam.wavelength)} lies outside the fit of {material.name}"
         yield Trouble("beam.wavelength", problem, span, "give `index` instead of `name`")
@@ -289,13 +292,13 @@ def feature(
                     f"at most {units.length(length / 2)}",
                     "choose a finer process or a longer period",
                 )
-            elif sampling.pixels_for(rule, length / count) > 1:
+            elif axis == "x" and sampling.pixels_for(rule, length / count) > WIDEST_RULE:
                 yield Trouble(
                     key,
-                    f"{units.length(rule)} takes more than one pixel along {axis}, and the search "
-                    f"does not keep such a rule yet",
-                    f"at most the pixel, {units.length(length / count, 6)}",
-                    "use larger pixels or a finer process",
+                    f"{units.length(rule)} takes {sampling.pixels_for(rule, length / count)} "
+                    f"pixels along x",
+                    f"at most {WIDEST_RULE} pixels",
+                    "use larger pixels: they keep the rule by themselves",
                 )
 
 
@@ -314,6 +317,7 @@ def limits(limits: Limits) -> Iterator[Trouble]:
 
 CHECKS: list[Check] = [
     material,
+    fit_range,
     plane,
     levels,
     pixels,

@@ -2,6 +2,7 @@
 
 from doe import sampling
 from doe.config.schema import Config
+from doe.config.target import Grid
 
 Pair = tuple[float, float]
 
@@ -28,6 +29,14 @@ def order_steps(config: Config) -> Pair:
     """Direction cosine of order 1 along (y, x): wavelength / period. Source: grating equation."""
     period_y, period_x = period(config)
     return config.beam.wavelength / period_y, config.beam.wavelength / period_x
+
+
+def spot_spacing(config: Config) -> float | None:
+    """Direction cosine between the nearest spots of a grid; None for other targets and one spot."""
+    if not isinstance(config.target, Grid):
+        return None
+    axes = zip(order_steps(config), config.target.nearest_steps(), strict=True)
+    return min((step * orders for step, orders in axes if orders), default=None)
 
 
 def mask_count(config: Config) -> int:

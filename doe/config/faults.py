@@ -31,6 +31,8 @@ def schema_fault(error: ErrorDetails, document: Document, prefix: str) -> Fault:
     if error["type"] == "union_tag_invalid":
         path, given = (*path, "kind"), given["kind"]
     found = path[1:] if prefix else path
+    if found and found[-1].isdigit() and not isinstance(document.at(found[:-1]), list):
+        path, found = path[:-1], found[:-1]  # one value that stands for a pair
     translate = TRANSLATORS.get(error["type"], plain)
     problem, allowed, fix = translate(error, path)
     show_value = error["type"] not in ("missing", "extra_forbidden")

@@ -23,9 +23,9 @@ def load(path: Path) -> tuple[Config, str]:
     """
     document = toml.read(path)
     faults: list[Fault] = []
-    raw = with_process_file(document, path, faults)
+    raw, shop = with_process_file(document, path, faults)
     sections = sound_sections(raw, document, faults)
-    faults += [placed(trouble, document) for trouble in check.run(sections)]
+    faults += [placed(trouble, document, shop) for trouble in check.run(sections)]
     if faults:
         raise ConfigError(
             *sorted(set(faults), key=lambda fault: (fault.line or 0, fault.key or ""))
@@ -73,12 +73,14 @@ def resolve(config: Config) -> Config:
     )
 
 
-def with_process_file(document: Document, path: Path, faults: list[Fault]) -> dict[str, Any]:
-    """The tables with the process file's keys beneath the inline ones."""
+def with_process_file(
+    document: Document, path: Path, faults: list[Fault]
+) -> tuple[dict[str, Any], Document | None]:
+    """The tables with the process file's keys beneath the inline ones, and that file."""
     raw = dict(document.tables)
     inline = raw.get("process")
     if not isinstance(inline, dict) or not isinstance(inline.get("file"), str):
-        return raw
+        return raw, None
     try:
         other = toml.read(path.parent / inline["file"])
         Process.model_validate(other.tables)
@@ -88,7 +90,8 @@ def with_process_file(document: Document, path: Path, faults: list[Fault]) -> di
         faults += schema_faults(error.errors(), other, prefix="process")
     else:
         raw["process"] = other.tables | inline
-    return raw
+        return raw, other
+    return raw, None
 
 
 def sound_sections(raw: dict[str, Any], document: Document, faults: list[Fault]) -> dict[str, Any]:
@@ -116,14 +119,15 @@ def section(name: str, table: Any) -> Any:
     return adapter.validate_python(table)
 
 
-def placed(trouble: check.Trouble, document: Document) -> Fault:
-    """A fault of a check with file, line and value of its key."""
+def placed(trouble: check.Trouble, document: Document, shop: Document | None) -> Fault:
+    """A fault of a check with file, line and value of its key; `shop` is the process file."""
     path = tuple(trouble.key.split("."))
-    value: Any = document.tables
-    for part in path:
-        value = value.get(part) if isinstance(value, dict) else None
+    at = path
+    if shop is not None and path[0] == "process" and document.at(path) is None:
+        document, at = shop, path[1:]
+    value = document.at(at)
     shown = None if value is None or isinstance(value, dict) else shorten(value)
-    line = document.line_of(path)
+    line = document.line_of(at)
     return Fault(
         trouble.problem, trouble.allowed, trouble.fix, document.file, line, trouble.key, shown
     )

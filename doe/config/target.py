@@ -1,6 +1,7 @@
 """The `[target]` table: one frozen model for each kind of pattern, and the orders each asks for."""
 
 import math
+from itertools import pairwise
 from typing import Annotated, Any, Literal, NamedTuple
 
 from pydantic import BeforeValidator, Field
@@ -57,8 +58,13 @@ class Grid(Section):
             return self.shape[0] * self.shape[1]
         return len(self.orders_y or (0,)) * len(self.orders_x or (0,))
 
+    def nearest_steps(self) -> tuple[int, int]:
+        """Orders between the nearest two spots along (y, x); 0 along a line of one."""
+        gaps = [[b - a for a, b in pairwise(sorted(axis))] for axis in self.axes()]
+        return min(gaps[0], default=0), min(gaps[1], default=0)
+
     def order_steps(self) -> tuple[int, int]:
-        """Orders from one spot to the next along (y, x): 2 for even counts, else 1."""
+        """Orders from one spot of a `shape` to the next along (y, x): 2 for even counts, else 1."""
         rows, columns = self.shape or (1, 1)
         return 2 - rows % 2, 2 - columns % 2
 

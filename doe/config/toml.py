@@ -10,10 +10,9 @@ from typing import Any
 from doe.errors import ConfigError, Fault
 
 LARGEST = 256 * 1024  # bytes; a job fits in two
+SHOWN = 160  # characters of a faulty line that are shown
 DEEPEST = 16  # tables within tables; more makes the parser slow or recurse without end
 
-HEADER = re.compile(r"\s*\[\[?\s*([^\[\]]+?)\s*\]\]?\s*(#.*)?$")
-KEY = re.compile(r"\s*([A-Za-z0-9_\-\"'. ]+?)\s*=(?!=)")
 PLACE = re.compile(r"\(at line (\d+), column (\d+)\)")
 
 KeyPath = tuple[str, ...]
@@ -27,6 +26,13 @@ class Document:
     text: str
     tables: dict[str, Any]
     lines: dict[KeyPath, int]
+
+    def at(self, path: KeyPath) -> Any:
+        """The value at a path of keys; None where there is none."""
+        value: Any = self.tables
+        for part in path:
+            value = value.get(part) if isinstance(value, dict) else None
+        return value
 
     def line_of(self, path: KeyPath) -> int | None:
         """Line of a key, or of the closest table or key around it; None where there is none."""
@@ -86,8 +92,7 @@ def check_depth(text: str, file: str) -> None:
         depth += 1 if sign in "[{" else -1
         if depth > DEEPEST:
             raise refusal(file, f"nested deeper than {DEEPEST}", "flatten the tables")
-    dotted = re.search(rf"(?:[\w\-]*\s*\.\s*){{{DEEPEST},}}[\w\-]*\s*[=\]]", bare)
-    if dotted:
+    if any(line.partition("=")[0].count(".") >= DEEPEST for line in bare.splitlines()):
         raise refusal(file, f"nested deeper than {DEEPEST} by a dotted key", "shorten the key")
 
 
@@ -104,7 +109,9 @@ def syntax_fault(message: str, text: str, file: str) -> Fault:
             name = ".".join(path)
             problem = f"the key stands twice, in lines {found[0]} and {found[-1]}"
             return Fault(problem, "each key once", "remove one", file, found[-1], name)
-    shown = f"TOML syntax: {problem}\n    {source}\n    {' ' * (column - 1)}^\n"
+    start = max(0, column - SHOWN // 2)
+    part, caret = source[start : start + SHOWN], " " * (column - 1 - start) + "^"
+    shown = f"TOML syntax: {problem}\n    {part}\n    {caret}\n"
     return Fault(shown, "TOML 1.0", "mend this line", file=file, line=line)
 
 
@@ -113,11 +120,12 @@ def key_lines(text: str) -> dict[KeyPath, list[int]]:
     found: dict[KeyPath, list[int]] = {}
     table: KeyPath = ()
     for number, line in enumerate(text.splitlines(), start=1):
-        if header := HEADER.match(line):
-            table = split(header[1])
+        bare = line.strip()
+        if bare.startswith("[") and "]" in bare:
+            table = split(bare.lstrip("[").partition("]")[0])
             found.setdefault(table, []).append(number)
-        elif key := KEY.match(line):
-            found.setdefault(table + split(key[1]), []).append(number)
+        elif "=" in bare and not bare.startswith("#"):
+            found.setdefault(table + split(bare.partition("=")[0]), []).append(number)
     return found
 
 

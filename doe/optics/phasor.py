@@ -5,9 +5,9 @@ import jax.numpy as jnp
 from jax import lax
 from jaxtyping import Array, Complex, Float
 
-# pi/2 as the sum of two float32 numbers, so that the reduced angle keeps full precision.
-HALF_PI_HIGH = 1.5707963705062866
-HALF_PI_LOW = -4.371139000186241e-08
+# pi/2 as a sum whose first two parts have so few bits that their multiples are exact in float32.
+# Source: Cody and Waite, Software Manual for the Elementary Functions (1980) (from memory).
+HALF_PI = (1.5703125, 4.837512969970703125e-4, 7.54978995489188216e-8)
 
 
 @jax.custom_jvp
@@ -21,7 +21,7 @@ def phasor(phase: Float[Array, "*shape"]) -> Complex[Array, "*shape"]:
     if phase.dtype == jnp.float64:
         return lax.complex(jnp.cos(phase), jnp.sin(phase))
     turn = jnp.round(phase * (2 / jnp.pi))
-    x = (phase - turn * HALF_PI_HIGH) - turn * HALF_PI_LOW
+    x = ((phase - turn * HALF_PI[0]) - turn * HALF_PI[1]) - turn * HALF_PI[2]
     square = x * x
     sine = x * (1 + square * (-1 / 6 + square * (1 / 120 - square / 5040)))
     cosine = 1 + square * (-1 / 2 + square * (1 / 24 + square * (-1 / 720 + square / 40320)))

@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from doe import files
 from doe.errors import Fault, FileError
@@ -15,9 +16,7 @@ MAGIC = b"doe checkpoint 1\n"
 NAMES = ("checkpoint.0", "checkpoint.1")  # written by turns, so that the last but one survives
 
 
-def write(
-    folder: Path, turn: int, facts: dict[str, Any], arrays: list[np.ndarray[Any, Any]]
-) -> None:
+def write(folder: Path, turn: int, facts: dict[str, Any], arrays: list[NDArray[Any]]) -> None:
     """Write the checkpoint of this turn whole, the one before it untouched."""
     memory = io.BytesIO()
     text = np.frombuffer(json.dumps(facts | {"turn": turn}).encode(), np.uint8)
@@ -28,7 +27,7 @@ def write(
     files.write(folder / NAMES[turn % 2], MAGIC + digest + b"\n" + body)
 
 
-def read(folder: Path) -> tuple[dict[str, Any], list[np.ndarray[Any, Any]]] | None:
+def read(folder: Path) -> tuple[dict[str, Any], list[NDArray[Any]]] | None:
     """Facts and arrays of the newest whole checkpoint; None where there is none.
 
     Error: FileError where checkpoints are there and none is whole.
@@ -47,7 +46,7 @@ def read(folder: Path) -> tuple[dict[str, Any], list[np.ndarray[Any, Any]]] | No
     return max(whole, key=lambda found: found[0]["turn"], default=None)
 
 
-def load(path: Path) -> tuple[dict[str, Any], list[np.ndarray[Any, Any]]] | None:
+def load(path: Path) -> tuple[dict[str, Any], list[NDArray[Any]]] | None:
     """Facts and arrays of a checkpoint, None where it is damaged."""
     data = path.read_bytes()
     digest, _, body = data[len(MAGIC) :].partition(b"\n")

@@ -1,11 +1,13 @@
 """A mask from elsewhere: levels, height or phase in a file, as a phase."""
 
+import warnings
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 from jaxtyping import Float
-from PIL import Image, UnidentifiedImageError
+from numpy.typing import NDArray
+from PIL import Image
 
 from doe.config import derived
 from doe.config.schema import Config
@@ -54,25 +56,25 @@ def phase_of(values: Any, kind: str, config: Config, path: Path) -> Float[np.nda
     return phase
 
 
-def array(path: Path) -> np.ndarray[Any, Any]:
+def array(path: Path) -> NDArray[Any]:
     """The array of a `.npy` file, its size looked at before it is read."""
     try:
-        values = np.load(path, mmap_mode="r", allow_pickle=False)
-        if not isinstance(values, np.ndarray) or values.size > MOST_PIXELS:
-            raise ValueError("it holds no array of bearable size")
+        values = np.lib.format.open_memmap(path, mode="r")  # reads no pickle, and the head only
+        if values.size > MOST_PIXELS:
+            raise ValueError("it holds more pixels than this tool takes")
         return np.array(values)
-    except (OSError, ValueError, EOFError) as error:
+    except Exception as error:  # a reader may raise anything on a file that is none
         raise unfit(path, f"cannot be read: {error}", "a .npy, .tif or .h5 file") from None
 
 
-def tiff(path: Path) -> np.ndarray[Any, Any]:
+def tiff(path: Path) -> NDArray[Any]:
     """The heights of a TIFF file, its size looked at before it is decoded."""
     try:
-        with Image.open(path) as image:
+        with warnings.catch_warnings(action="error"), Image.open(path) as image:
             if image.width * image.height > MOST_PIXELS:
                 raise ValueError(f"it has {image.width} x {image.height} pixels")
             return np.flipud(np.asarray(image))  # picture row 0 is the largest y
-    except (OSError, ValueError, UnidentifiedImageError, SyntaxError) as error:
+    except Exception as error:  # as above; a warning of a broken file counts too
         raise unfit(path, f"cannot be read: {error}", "a float32 TIFF of heights in m") from None
 
 

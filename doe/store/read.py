@@ -1,16 +1,17 @@
 """record.h5 to Result: checksum first, then guarded HDF5, FileError on anything amiss."""
 
-import hashlib
 import io
 import json
+import math
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import h5py
 import numpy as np
+from numpy.typing import NDArray
 
 from doe.config import load
-from doe.config.derived import rule_pixels
+from doe.config.derived import mask_count, rule_pixels
 from doe.config.schema import Config
 from doe.errors import Fault, FileError
 from doe.result import (
@@ -22,7 +23,7 @@ from doe.result import (
     Trace,
     judge_limits,
 )
-from doe.store.layout import BLOCK, FORMAT, LARGEST, VERSION
+from doe.store.layout import BLOCK, FORMAT, LARGEST, SCORES, VERSION, head
 
 MOST_VALUES = 400_000_000  # of one dataset; a guard against files that claim impossible sizes
 FILTERS = {"gzip", None}
@@ -35,7 +36,7 @@ def read(path: Path) -> Result:
     try:
         with h5py.File(io.BytesIO(data), "r") as file:
             return result_of(file)
-    except (OSError, RuntimeError, KeyError, ValueError, TypeError, AssertionError) as error:
+    except Exception as error:  # HDF5 and its reader may raise anything on a hostile file
         raise unfit(path, f"the record does not hold what it should: {error}") from None
 
 
@@ -74,14 +75,11 @@ def check_head(data: bytes, path: Path) -> None:
         raise unfit(path, "this is no record of this tool")
     if facts.get("version") != VERSION:
         raise unfit(path, f"this record has format version {facts.get('version')!r:.20}")
-    rest = data[BLOCK:]
-    if facts.get("bytes") != len(rest):
-        raise unfit(path, f"the record is cut short or too long: {len(rest)} bytes")
-    if facts.get("sha256") != hashlib.sha256(rest).hexdigest():
-        raise unfit(path, "the record is damaged: its checksum differs")
+    if data[:BLOCK] != head(data):
+        raise unfit(path, "the record is damaged or cut short: its size or checksum differs")
 
 
-def dataset(group: h5py.Group, name: str, kinds: str, ndim: int) -> np.ndarray[Any, Any]:
+def dataset(group: h5py.Group, name: str, kinds: str, ndim: int) -> NDArray[Any]:
     """An array read only after its link, type, shape, size and filters have been looked at."""
     if not isinstance(group.get(name, getlink=True), h5py.HardLink):
         raise ValueError(f"{name} is missing or points elsewhere")
@@ -92,7 +90,7 @@ def dataset(group: h5py.Group, name: str, kinds: str, ndim: int) -> np.ndarray[A
         raise ValueError(f"{name} has an unfitting type or shape")
     if found.compression not in FILTERS:
         raise ValueError(f"{name} uses an unknown filter")
-    values: np.ndarray[Any, Any] = found[()]
+    values: NDArray[Any] = found[()]
     if kinds == "f" and not np.all(np.isfinite(values)):
         raise ValueError(f"{name} holds numbers that are not finite")
     return values
@@ -100,42 +98,90 @@ def dataset(group: h5py.Group, name: str, kinds: str, ndim: int) -> np.ndarray[A
 
 def result_of(file: h5py.File) -> Result:
     """The result in an open file."""
-    config = load.from_record(str(file["config"].attrs["resolved"]))
-    scores = {name: float(value) for name, value in file["scores"].attrs.items()}
+    config = load.from_record(text_of(file["config"], "resolved"))
+    scores = scores_of(file["scores"])
     made_by = dict(file["made_by"].attrs)
-    bound = file["scores/bound"].attrs
     return Result(
         config=config,
-        config_text=str(file["config"].attrs["given"]),
+        config_text=text_of(file["config"], "given"),
         method=str(made_by.pop("method")),
-        mask=mask_of(file["mask"]),
+        mask=mask_of(file["mask"], config),
         features=features_of(file["mask"], config),
-        orders=orders_of(file["orders"]),
-        scores=dict(scores),
-        bound=Bound(bound["efficiency"], bound["levels_factor"], bound["kind"]),
-        limits=judge_limits(config.limits, dict(scores)),
-        trace=Trace(
-            step=dataset(file["trace"], "step", "iu", 1),
-            loss=dataset(file["trace"], "loss", "f", 1),
-            efficiency=dataset(file["trace"], "efficiency", "f", 1),
-            uniformity_error=dataset(file["trace"], "uniformity_error", "f", 1),
-        ),
+        orders=orders_of(file["orders"], config),
+        scores=scores,
+        bound=bound_of(file["scores/bound"]),
+        limits=judge_limits(config.limits, scores),
+        trace=trace_of(file["trace"]),
         steps=int(made_by.pop("steps")),
-        seconds=float(made_by.pop("seconds")),
+        seconds=finite(made_by.pop("seconds")),
         warnings=tuple(str(text) for text in made_by.pop("warnings")),
         made_by={name: str(value) for name, value in made_by.items()},
     )
 
 
-def mask_of(group: h5py.Group) -> Mask:
-    """The relief; a continuous profile has no levels and layers."""
-    has_levels = "levels" in group
-    return Mask(
-        phase=dataset(group, "phase", "f", 2),
-        height=dataset(group, "height", "f", 2),
-        levels=dataset(group, "levels", "u", 2) if has_levels else None,
-        layers=dataset(group, "layers", "b", 3) if has_levels else None,
+def text_of(group: h5py.Group, name: str) -> str:
+    """A text attribute."""
+    text = group.attrs[name]
+    if not isinstance(text, str):
+        raise ValueError(f"{name} is no text")
+    return text
+
+
+def finite(number: Any) -> float:
+    """A number that is finite."""
+    value = float(number)
+    if not math.isfinite(value):
+        raise ValueError("a number is not finite")
+    return value
+
+
+def scores_of(group: h5py.Group) -> dict[str, float | None]:
+    """The scores by name; None for those that do not apply."""
+    strange = set(group.attrs) - set(SCORES)
+    if strange:
+        raise ValueError(f"unknown scores: {', '.join(sorted(strange))}")
+    return {name: finite(group.attrs[name]) if name in group.attrs else None for name in SCORES}
+
+
+def bound_of(group: h5py.Group) -> Bound:
+    """The bound, of a known kind and above 0."""
+    efficiency, factor = finite(group.attrs["efficiency"]), finite(group.attrs["levels_factor"])
+    kind = text_of(group, "kind")
+    if efficiency <= 0 or kind not in get_args(Bound.__annotations__["kind"]):
+        raise ValueError("the bound is none")
+    return Bound(efficiency, factor, kind)  # type: ignore[arg-type]  # looked up in the line above
+
+
+def trace_of(group: h5py.Group) -> Trace:
+    """The trace."""
+    return Trace(
+        step=dataset(group, "step", "iu", 1),
+        loss=dataset(group, "loss", "f", 1),
+        efficiency=dataset(group, "efficiency", "f", 1),
+        uniformity_error=dataset(group, "uniformity_error", "f", 1),
     )
+
+
+def mask_of(group: h5py.Group, config: Config) -> Mask:
+    """The relief, of the config's shape and levels; a continuous profile has no levels."""
+    shape, masks = config.element.pixels, mask_count(config)
+    phase = exact(dataset(group, "phase", "f", 2), np.float32, shape)
+    height = exact(dataset(group, "height", "f", 2), np.float32, shape)
+    if masks == 0:
+        return Mask(phase=phase, height=height, levels=None, layers=None)
+    levels = exact(dataset(group, "levels", "u", 2), np.uint8, shape)
+    layers = exact(dataset(group, "layers", "b", 3), np.bool_, (masks, *shape))
+    weights = 2 ** np.arange(masks)[::-1]
+    if not np.array_equal(np.tensordot(weights, layers, axes=1), levels):
+        raise ValueError("levels and layers are not one relief")
+    return Mask(phase=phase, height=height, levels=levels, layers=layers)
+
+
+def exact(values: NDArray[Any], kind: type, shape: tuple[int, ...]) -> NDArray[Any]:
+    """An array of just this type and shape."""
+    if values.dtype != kind or values.shape != shape:
+        raise ValueError(f"an array is {values.dtype} {list(values.shape)}, not {list(shape)}")
+    return values
 
 
 def features_of(group: h5py.Group, config: Config) -> tuple[FeatureReport, ...]:
@@ -149,11 +195,12 @@ def features_of(group: h5py.Group, config: Config) -> tuple[FeatureReport, ...]:
     )
 
 
-def orders_of(group: h5py.Group) -> OrderTable:
-    """The order table."""
+def orders_of(group: h5py.Group, config: Config) -> OrderTable:
+    """The order table, of the config's shape."""
+    rows, columns = shape = config.element.pixels
     return OrderTable(
-        m_y=dataset(group, "m_y", "iu", 1),
-        m_x=dataset(group, "m_x", "iu", 1),
-        power=dataset(group, "power", "f", 2),
-        target=dataset(group, "target", "f", 2),
+        m_y=exact(dataset(group, "m_y", "i", 1), np.int64, (rows,)),
+        m_x=exact(dataset(group, "m_x", "i", 1), np.int64, (columns,)),
+        power=exact(dataset(group, "power", "f", 2), np.float64, shape),
+        target=exact(dataset(group, "target", "f", 2), np.float64, shape),
     )
