@@ -9,7 +9,6 @@ from doe.bound import bound
 from doe.config import derived
 from doe.config.advice import warnings
 from doe.config.schema import Config
-from doe.config.target import Grid
 from doe.result import Bound, LimitVerdict
 from doe.targets import build
 from doe.targets.spots import SpotTarget
@@ -101,9 +100,9 @@ def spot_facts(config: Config, target: SpotTarget) -> Iterator[Fact]:
         yield Fact("spot_diameter_m", "spot diameter (1/e^2)", spot, units.length(spot))
     else:
         yield Fact("spot_angle_rad", "spot width (1/e^2)", angle, units.angle(angle))
-    if isinstance(config.target, Grid) and config.target.count() > 1:
-        steps, numbers = derived.order_steps(config), config.target.order_steps()
-        ratio = min(s * n for s, n in zip(steps, numbers, strict=True)) / angle
+    spacing = derived.spot_spacing(config)
+    if spacing is not None:
+        ratio = spacing / angle
         yield Fact("pitch_to_spot", "spot pitch over spot diameter", ratio, f"{ratio:.2f}")
     periods = beam.diameter / max(derived.period(config))
     yield Fact("periods_in_beam", "periods in the beam", periods, f"{periods:.2f}")

@@ -1,10 +1,11 @@
-"""Mask layers as a GDSII layout: one layer a mask, the unit cell once, an array of references."""
+"""Mask layers as a GDSII or OASIS layout: the unit cell once, and an array of references to it."""
 
 import datetime
 import math
 import tempfile
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Literal
 
 import gdstk
 import numpy as np
@@ -13,12 +14,15 @@ from jaxtyping import Bool, Int
 from doe import units
 from doe.config import derived
 from doe.config.schema import Config
+from doe.errors import ConfigError, Fault
 from doe.result import Result
 
 ORIENTATION_LAYER = 100  # drawn for the reader of the layout, etched by no mask
+MOST_COPIES = 32_767  # GDSII counts rows and columns of an array in 16 bits (from memory)
 MARK_STROKE = 20_000  # nm, width of the strokes of the orientation mark
 STAMP = datetime.datetime(2000, 1, 1)  # fixed, so that equal designs give equal bytes
-NAME = "mask.gds"
+Form = Literal["gds", "oas"]
+NAMES: dict[Form, str] = {"gds": "mask.gds", "oas": "mask.oas"}
 
 
 @dataclass(frozen=True)
@@ -34,6 +38,8 @@ def placement_of(config: Config) -> Placement:
     """Whole cells over the square around the clear aperture, centred on the origin."""
     period = [max(1, units.in_nm(length)) for length in derived.period(config)]
     aperture = units.in_nm(config.element.aperture)
+    if config.element.pixels[0] == 1:
+        period[0] = aperture  # the lines of a one-dimensional grating run through
     copies = [math.ceil(aperture / length) for length in period]
     origin = [-(n * length) // 2 for n, length in zip(copies, period, strict=True)]
     return Placement((period[0], period[1]), (copies[0], copies[1]), (origin[0], origin[1]))
@@ -46,9 +52,18 @@ def drawn_layers(result: Result) -> Bool[np.ndarray, "mask y x"]:
     return ~layers if result.config.process.drawn == "etched" else layers
 
 
-def gdsii(result: Result) -> bytes:
+def layout(result: Result, form: Form) -> bytes:
     """The layout of a record with binary layers; the same record gives the same bytes."""
     place = placement_of(result.config)
+    if form == "gds" and max(place.copies) > MOST_COPIES:
+        raise ConfigError(
+            Fault(
+                f"the aperture takes {max(place.copies)} periods in a row",
+                f"at most {MOST_COPIES} in a GDSII array",
+                "export with --format oas, or use a longer period",
+                key="element.period",
+            )
+        )
     cell = gdstk.Cell("UNIT_CELL")
     for number, layer in enumerate(drawn_layers(result), start=1):
         for box in rectangles(layer, place.period):
@@ -62,8 +77,11 @@ def gdsii(result: Result) -> bytes:
     library = gdstk.Library("DOE", unit=units.MICRO, precision=units.NANO)
     library.add(top, cell)
     with tempfile.TemporaryDirectory() as folder:
-        path = Path(folder) / NAME
-        library.write_gds(path, timestamp=STAMP)
+        path = Path(folder) / NAMES[form]
+        if form == "gds":
+            library.write_gds(path, timestamp=STAMP)
+        else:
+            library.write_oas(path)
         return path.read_bytes()
 
 

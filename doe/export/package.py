@@ -6,13 +6,13 @@ from typing import Any
 from doe import files
 from doe.config import derived
 from doe.errors import ConfigError, Fault
-from doe.export import layout, orders
+from doe.export import height, layout, orders
 from doe.result import Result
 
 MANIFEST = "manifest.json"
 
 
-def contents(result: Result) -> dict[str, bytes]:
+def contents(result: Result, form: layout.Form) -> dict[str, bytes]:
     """Name and bytes of each file, the manifest last. Error: ConfigError without binary layers."""
     if result.mask.layers is None:
         raise ConfigError(
@@ -24,7 +24,11 @@ def contents(result: Result) -> dict[str, bytes]:
                 value=str(result.config.element.levels),
             )
         )
-    package = {layout.NAME: layout.gdsii(result), orders.NAME: orders.order_csv(result)}
+    package = {
+        layout.NAMES[form]: layout.layout(result, form),
+        height.NAME: height.height_tiff(result),
+        orders.NAME: orders.order_csv(result),
+    }
     hashes = {name: files.sha256(data) for name, data in package.items()}
     text = json.dumps(manifest(result, hashes), indent=2, allow_nan=False) + "\n"
     return package | {MANIFEST: text.encode()}
@@ -34,7 +38,6 @@ def manifest(result: Result, hashes: dict[str, str]) -> dict[str, Any]:
     """What a mask shop must know: meaning of each layer, sizes in m, orientation, hashes."""
     config = result.config
     place = layout.placement_of(config)
-    exact = derived.period(config)
     depths = enumerate(derived.layer_depths(config), start=1)
     return {
         "title": config.title,
@@ -52,7 +55,10 @@ def manifest(result: Result, hashes: dict[str, str]) -> dict[str, Any]:
         ],
         "period_m": [length / 1e9 for length in place.period],
         "period_rounding_m": [
-            length / 1e9 - wanted for length, wanted in zip(place.period, exact, strict=True)
+            length / 1e9 - wanted if count > 1 else 0.0
+            for length, wanted, count in zip(
+                place.period, derived.period(config), config.element.pixels, strict=True
+            )
         ],
         "pixel_pitch_m": list(derived.pixel_pitch(config)),
         "pixels": list(config.element.pixels),

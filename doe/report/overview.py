@@ -8,7 +8,7 @@ from matplotlib.colors import ListedColormap
 
 from doe import units
 from doe.config import derived
-from doe.report.style import BLUE, GREY, VERMILION, figure, png
+from doe.report.style import BLUE, GREY, VERMILION, figure, percent_on_log, png
 from doe.result import Result
 
 
@@ -18,7 +18,7 @@ def draw(result: Result) -> bytes:
     draw_mask(made, mask, result)
     draw_orders(made, orders, result)
     draw_trace(trace, result)
-    made.suptitle(result.config.title)
+    made.suptitle(result.config.title, parse_math=False)
     return png(made)
 
 
@@ -81,6 +81,6 @@ def draw_trace(axes: Any, result: Result) -> None:
     axes.plot(trace.step, trace.efficiency * 100, color=BLUE, label="efficiency")
     axes.set(title="the drawn design on the way", xlabel="step", ylabel="efficiency (%)")
     other = axes.twinx()
-    other.semilogy(trace.step, trace.uniformity_error * 100, color=VERMILION)
+    other.semilogy(trace.step, percent_on_log(trace.uniformity_error), color=VERMILION)
     other.set_ylabel("uniformity error (%)", color=VERMILION)
     axes.yaxis.label.set_color(BLUE)
