@@ -25,7 +25,13 @@ SMALL_JOB: dict[str, Any] = {
     "material": {"index": 1.5},
     "plane": {"kind": "angles"},
     "target": {"kind": "grid", "shape": [3, 3]},
-    "solver": {"methods": ["gradient"], "starts": 2, "steps": 40},
+    "solver": {
+        "methods": ["gradient"],
+        "starts": 2,
+        "hops": 0,
+        "refine": False,
+        "steps": 40,
+    },
 }
 
 

@@ -20,7 +20,7 @@ LAYERS = [
     "problem",
     "solvers",
     "pipeline",
-    "feasibility export report",
+    "feasibility export signoff report",
     "cli",
 ]
 RANK = {name: rank for rank, names in enumerate(LAYERS) for name in names.split()}
