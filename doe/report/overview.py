@@ -84,3 +84,10 @@ def draw_trace(axes: Any, result: Result) -> None:
     other.semilogy(trace.step, percent_on_log(trace.uniformity_error), color=VERMILION)
     other.set_ylabel("uniformity error (%)", color=VERMILION)
     axes.yaxis.label.set_color(BLUE)
+    if len(trace.step) and trace.step[-1] > result.steps:
+        axes.axvline(result.steps, color=GREY, linestyle=":")
+        place = (result.steps, 0.5)
+        text = "levels searched from here "
+        axes.annotate(
+            text, place, xycoords=("data", "axes fraction"), rotation=90, ha="right", va="center"
+        )

@@ -4,6 +4,7 @@ import csv
 import hashlib
 import io
 import json
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -16,7 +17,7 @@ from doe.errors import ConfigError
 from doe.export.orders import order_csv
 from doe.export.package import contents
 from doe.pipeline import evaluate
-from doe.result import Result
+from doe.result import Result, Trace
 from doe.store import write
 
 
@@ -24,7 +25,9 @@ def result_of(**changes: object) -> Result:
     """A random mask under the small job with changes."""
     config, text = load(job(**({"element__pixels": 16} | changes)))
     level = np.random.default_rng(3).integers(0, 8, config.element.pixels)
-    return evaluate(config, text, level * (2 * np.pi / 8), Errors())
+    found = evaluate(config, text, level * (2 * np.pi / 8), Errors())
+    course = np.array([0.5, 0.6], np.float32)
+    return replace(found, trace=Trace(np.array([10, 20]), course, course, course))
 
 
 def manifest_of(result: Result) -> dict:
