@@ -6,6 +6,7 @@ from typing import Literal
 import numpy as np
 from jaxtyping import Bool, Float, Int, UInt8
 
+from doe.config.quantity import Limit
 from doe.config.schema import Config, Limits
 
 Status = Literal["met", "missed", "not judged"]
@@ -110,10 +111,20 @@ def status_of(limits: tuple[LimitVerdict, ...]) -> Status:
     return "met" if all(judged) else "missed"
 
 
+SOMETIMES = {"position_error"}  # scores that not every target has
+
+
+def verdict(name: str, limit: Limit, score: float | None) -> bool | None:
+    """Whether a score keeps a limit; one that wants light and got none does not."""
+    if score is None:
+        return None if name in SOMETIMES else False
+    return limit.met_by(score)
+
+
 def judge_limits(limits: Limits, scores: dict[str, float | None]) -> tuple[LimitVerdict, ...]:
     """Each stated limit against the scores; limits on made parts wait for the forecast."""
     drawn = [
-        LimitVerdict(name, str(one), scores.get(name), one.met_by(scores.get(name)))
+        LimitVerdict(name, str(one), scores.get(name), verdict(name, one, scores.get(name)))
         for name, one in limits.items()
     ]
     made = limits.made.items() if limits.made else []

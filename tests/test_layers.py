@@ -18,13 +18,13 @@ LAYERS = [
     "optics fabrication",
     "metrics",
     "problem",
-    "solvers",
+    "solvers scoring",
     "pipeline",
     "feasibility export signoff report",
     "cli",
 ]
 RANK = {name: rank for rank, names in enumerate(LAYERS) for name in names.split()}
-MAY_USE_JAX = {"optics", "fabrication", "metrics", "problem", "solvers", "pipeline"}
+MAY_USE_JAX = {"optics", "fabrication", "metrics", "problem", "solvers", "scoring", "pipeline"}
 DRY = sorted(set(RANK) - MAY_USE_JAX)
 LIGHT = ["errors", "units", "sampling", "material", "machine", "files", "cli"]
 HEAVY = {"jax", "optax", "numpy", "scipy", "h5py", "matplotlib", "gdstk", "numba", "rich"}

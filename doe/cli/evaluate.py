@@ -39,14 +39,14 @@ def evaluate(
 
     The mask is taken as it is, never rounded to levels.
     """
-    from doe import pipeline
     from doe.config.load import load
     from doe.config.made_part import parse_errors
+    from doe.scoring import evaluate as score
     from doe.store.mask import read_phase
 
     job, text = load(config)
     made = parse_errors(errors, job)
-    result = pipeline.evaluate(job, text, read_phase(mask, kind, job), made)
+    result = score(job, text, read_phase(mask, kind, job), made)
     if as_json:
         print_json(result_json(result, None))
     else:

@@ -103,15 +103,9 @@ class Limit(Section):
     sense: Literal["<=", ">="]
     value: float
 
-    def met_by(self, score: float | None) -> bool | None:
-        """Whether a score keeps the limit; None where the score does not apply."""
-        if score is None:
-            return None
+    def met_by(self, score: float) -> bool:
+        """Whether a score keeps the limit."""
         return score <= self.value if self.sense == "<=" else score >= self.value
-
-    def excess(self, score: float) -> float:
-        """How far a score lies on the wrong side, 0 where it keeps the limit."""
-        return max(0.0, score - self.value if self.sense == "<=" else self.value - score)
 
     def __str__(self) -> str:
         return f"{self.sense} {self.value:.6g}"

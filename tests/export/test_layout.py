@@ -12,8 +12,8 @@ from helpers import job
 from doe.config.load import load
 from doe.config.made_part import Errors
 from doe.export import layout
-from doe.pipeline import evaluate
 from doe.result import Result
+from doe.scoring import evaluate
 
 
 def result_of(**changes: object) -> Result:

@@ -16,8 +16,8 @@ from doe.config.made_part import Errors
 from doe.errors import ConfigError
 from doe.export.orders import order_csv
 from doe.export.package import contents
-from doe.pipeline import evaluate
 from doe.result import Result, Trace
+from doe.scoring import evaluate
 from doe.store import write
 
 

@@ -11,9 +11,9 @@ from PIL import Image
 
 from doe.config.load import load
 from doe.config.made_part import Errors
-from doe.pipeline import evaluate
 from doe.report import comparison, overview
 from doe.result import Result, Trace
+from doe.scoring import evaluate
 
 
 def result_of(**changes: object) -> Result:
@@ -37,11 +37,9 @@ def picture(data: bytes) -> np.ndarray:
 CASES = {
     "levels": {},
     "two levels": {"element__levels": 2, "target__shape": [2, 2]},
-    "256 levels": {"element__levels": 256},
     "continuous": {"element__levels": 0},
     "one dimension": {"element__pixels": [1, 48], "target__shape": [1, 5]},
-    "one order": {"target": {"kind": "orders", "orders": [[0, 1]]}},
-    "order at the edge": {"target": {"kind": "orders", "orders": [[7, -7], [-7, 7]]}},
+    "one order at the edge": {"target": {"kind": "orders", "orders": [[7, -7]]}},
     "not square": {"element__pixels": [24, 16], "element__period": ["0.3 mm", "0.64 mm"]},
 }
 
@@ -68,15 +66,25 @@ def test_another_mask_gives_another_picture():
     assert overview.draw(replace(result, mask=mask)) != overview.draw(result)
 
 
+def draw_comparison(result: Result) -> bytes:
+    """The picture of a comparison with one entry."""
+    return comparison.draw({("gradient", True): result})
+
+
 @pytest.mark.parametrize(
-    "title", ["5 $_$ each", "a_b^c", "$\\frac{$", "100 % \\ ~ & #", "x" * 120, "Größe µm"]
+    ("draw", "title"),
+    [
+        (overview.draw, "5 $_$ each"),
+        (overview.draw, "100 % \\ ~ & # µ " + "x" * 100),
+        (draw_comparison, "$\\frac{$ a_b^c"),
+    ],
+    ids=["dollars", "signs", "comparison"],
 )
-def test_any_title_is_drawn_as_it_stands(title):
+def test_any_title_is_drawn_as_it_stands(draw, title):
     """Signs of formulas are text here; a run of hours must not fail at its picture."""
     result = result_of()
     titled = replace(result, config=result.config.model_copy(update={"title": title}))
-    assert picture(overview.draw(titled)).size
-    assert picture(comparison.draw({("gradient", True): titled})).size
+    assert picture(draw(titled)).size
 
 
 def test_perfect_and_missing_figures_are_drawn_too():

@@ -38,6 +38,7 @@ def designed(monkeypatch, capsys, method: str, starts: int, steps: int, **change
     """The JSON of `doe run` with one method."""
     start = "order-phases" if method == "gradient" else "random"  # the loops' own, as published
     solver = {"methods": [method], "starts": starts, "steps": steps, "start": start}
+    solver |= {"search.blocks": 40, "search.trials": 50_000}  # a line is small
     status, out, err = call(monkeypatch, capsys, "run", job(solver=solver, **changes), "--json")
     assert status in (0, 1), err
     return json.loads(out)

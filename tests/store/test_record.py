@@ -18,8 +18,8 @@ from doe.config import derived
 from doe.config.load import load
 from doe.config.made_part import Errors
 from doe.errors import FileError
-from doe.pipeline import evaluate
 from doe.result import Result, Trace
+from doe.scoring import evaluate
 from doe.store import read, write
 from doe.store.layout import BLOCK
 
@@ -419,6 +419,7 @@ HOSTILE = {
     "config nested without end": attribute("config", "resolved", "[" * 30_000),
     "a score that is text": attribute("scores", "efficiency", "much"),
     "a score that is NaN": attribute("scores", "efficiency", np.nan),
+    "a score that is no score": attribute("scores", "<script>", 1.0),
     "seconds NaN": attribute("made_by", "seconds", np.nan),
     "bound NaN": attribute("scores/bound", "efficiency", np.nan),
     "bound 0": attribute("scores/bound", "efficiency", 0.0),
@@ -487,16 +488,6 @@ def test_a_forged_record_with_nothing_changed_is_accepted(taken):
 def test_a_hostile_record_with_a_right_checksum_is_refused(name, taken):
     number = list(HOSTILE).index(name)
     assert taken.get(f"{number}.h5", "it hangs or dies") == "refused"
-
-
-def test_a_name_that_is_no_score_is_not_taken_for_one(small):
-    """It would end in tables and pages that people open."""
-    forged(small, attribute("scores", "<script>", 1.0), "named.h5")
-    try:
-        taken = set(read.read(Path("named.h5")).scores)
-    except FileError:
-        taken = set()
-    assert taken <= SCORES
 
 
 def test_an_unchanged_record_is_not_written_to_by_reading(small):
