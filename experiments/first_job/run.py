@@ -111,16 +111,26 @@ def comparison_rows() -> list[tuple[str, str, float, bool]]:
         print(LINE.format(title, *numbers, f"{row['seconds']:.1f}"))
     own = next(row for row in got["methods"] if row["name"] == "gradient" and row["refined"])
     published = [row for row in got["methods"] if row["name"] != "gradient" and not row["refined"]]
-    return [
-        (
-            f"better than {other['name']} as published",
-            "both",
-            own["efficiency"],
-            own["efficiency"] > other["efficiency"]
-            and own["uniformity_error"] < other["uniformity_error"],
-        )
-        for other in published
-    ]
+    return [beaten(own, other) for other in published]
+
+
+def beaten(own: dict, other: dict) -> tuple[str, str, float, bool]:
+    """More light at no more unevenness; designed anew where the other is the more even one."""
+    if other["uniformity_error"] < own["uniformity_error"]:
+        with tempfile.TemporaryDirectory() as name:
+            limit = f'uniformity_error = "<= {other["uniformity_error"] * 100:.4f} %"'
+            strict = JOB.read_text().replace('uniformity_error = "<= 1 %"', limit)
+            process = JOB.parent / "processes" / "i-line.toml"
+            strict = strict.replace("processes/i-line.toml", str(process))
+            (Path(name) / "strict.toml").write_text(strict)
+            _, got = timed("run", Path(name) / "strict.toml", "--json", "--quiet")
+            own = got["scores"]
+    title = f"at U of {other['name']} as published ({other['uniformity_error']:.3%}) or less"
+    passed = (
+        own["efficiency"] > other["efficiency"]
+        and own["uniformity_error"] <= other["uniformity_error"]
+    )
+    return title, f">= {other['efficiency']:.4f}", own["efficiency"], passed
 
 
 if __name__ == "__main__":
