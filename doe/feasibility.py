@@ -150,7 +150,7 @@ def cost_facts(config: Config) -> Iterator[Fact]:
     """Memory and time of a run."""
     rows, columns = config.element.pixels
     memory = machine.memory_needed(rows * columns)
-    yield Fact("memory_bytes", "memory of a run", memory, f"{memory / 1e9:.2f} GB")
+    yield Fact("memory_bytes", "memory of a run", memory, units.gigabytes(memory))
     work = rows * columns * config.solver.starts * config.solver.steps
     seconds = FIRST_SECONDS + work * STEP_SECONDS
     yield Fact("time_s", "time of a run, roughly", seconds, f"{seconds:.0f} s")

@@ -91,6 +91,16 @@ def in_nm(value: float) -> int:
     return round(value / NANO)
 
 
+def gigabytes(count: float) -> str:
+    """Bytes as text in gigabytes."""
+    return f"{count / 1e9:.2f} GB"
+
+
+def from_nm(count: int) -> float:
+    """Whole nanometres in metres."""
+    return count / 1e9
+
+
 def in_um(value: float) -> float:
     """Metres to micrometres."""
     return value / MICRO

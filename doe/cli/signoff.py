@@ -22,6 +22,7 @@ def signoff(
     """
     from doe.signoff.verdict import AGREE, sign_off
     from doe.store import read
+    from doe.units import in_um
 
     result = read.read(record)
     verdict = sign_off(result, layout, manifest)
@@ -42,7 +43,7 @@ def signoff(
             [
                 str(one.layer or "-"),
                 one.kind,
-                "-" if one.x_m is None else f"{one.x_m * 1e6:.3f}, {(one.y_m or 0) * 1e6:.3f}",
+                "-" if one.x_m is None else f"{in_um(one.x_m):.3f}, {in_um(one.y_m or 0):.3f}",
                 "-" if one.loss is None else f"{one.loss:+.4%}",
             ]
             for one in verdict.differences

@@ -7,8 +7,8 @@ from typing import Any
 
 from pydantic import TypeAdapter, ValidationError
 
-from doe import machine
-from doe.config import check, toml
+from doe import machine, units
+from doe.config import check, fit, toml
 from doe.config.faults import schema_faults, shorten
 from doe.config.schema import Config, Process
 from doe.config.toml import Document
@@ -59,7 +59,7 @@ def digest(config: Config) -> str:
 
 def resolve(config: Config) -> Config:
     """The config with its period and index filled in and its process file no longer needed."""
-    period = check.resolved_period(config.beam, config.element, config.plane, config.target)
+    period = fit.resolved_period(config.beam, config.element, config.plane, config.target)
     name = config.material.name
     index = MATERIALS[name].index(config.beam.wavelength) if name else config.material.index
     process = config.process
@@ -119,7 +119,7 @@ def section(name: str, table: Any) -> Any:
     return adapter.validate_python(table)
 
 
-def placed(trouble: check.Trouble, document: Document, shop: Document | None) -> Fault:
+def placed(trouble: fit.Trouble, document: Document, shop: Document | None) -> Fault:
     """A fault of a check with file, line and value of its key; `shop` is the process file."""
     path = tuple(trouble.key.split("."))
     at = path
@@ -142,7 +142,7 @@ def check_memory(config: Config, document: Document) -> None:
     side = int(machine.pixels_that_fit(budget) ** 0.5)
     raise BudgetError(
         Fault(
-            f"the design needs {needed / 1e9:.1f} GB, the budget is {budget / 1e9:.1f} GB",
+            f"the design needs {units.gigabytes(needed)}, the budget is {units.gigabytes(budget)}",
             f"at most {side} x {side} pixels here",
             "use fewer pixels or a machine with more memory",
             document.file,

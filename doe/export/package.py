@@ -3,7 +3,7 @@
 import json
 from typing import Any
 
-from doe import files
+from doe import files, units
 from doe.config import derived
 from doe.errors import ConfigError, Fault
 from doe.export import height, layout, orders
@@ -53,9 +53,9 @@ def manifest(result: Result, hashes: dict[str, str]) -> dict[str, Any]:
             }
             for etch, depth in depths
         ],
-        "period_m": [length / 1e9 for length in place.period],
+        "period_m": [units.from_nm(length) for length in place.period],
         "period_rounding_m": [
-            length / 1e9 - wanted if count > 1 else 0.0
+            units.from_nm(length) - wanted if count > 1 else 0.0
             for length, wanted, count in zip(
                 place.period, derived.period(config), config.element.pixels, strict=True
             )

@@ -10,9 +10,9 @@ import numpy as np
 from jaxtyping import Bool, Int
 
 from doe.errors import Fault, FileError
+from doe.units import NANO, in_nm
 
 LARGEST = 2_000_000_000  # bytes of a layout this tool opens
-NANOMETRE = 1000  # in a user unit of the layout, the micrometre
 ON_GRID = 1e-3  # nm; a corner further from a whole nanometre is off the grid
 
 Corners = Int[np.ndarray, "_ 2"]
@@ -106,8 +106,8 @@ def read_drawing(path: Path, manifest: dict[str, Any]) -> Drawing:
         names = ", ".join(f"{layer}/{datatype}" for layer, datatype in sorted(strange))
         raise unfit(path, f"layers the manifest does not name: {names}", "the manifest's layers")
     array = the_array(top, path)
-    period = [round(length * 1e9) for length in manifest["period_m"]]
-    scale = library.unit / 1e-6 * NANOMETRE
+    period = [in_nm(length) for length in manifest["period_m"]]
+    scale = library.unit / NANO
     shapes = [
         [corners(p, scale, path) for p in array.cell.get_polygons(layer=layer, datatype=datatype)]
         for layer, datatype, _, _ in manifest["layers"]

@@ -13,8 +13,10 @@ from doe.files import sha256
 from doe.result import Result
 from doe.signoff.drawing import Drawing, read_drawing, read_manifest, unfit
 from doe.signoff.light import order_powers
+from doe.units import NANO
 
 AGREE = 1e-5  # of the whole light, in every order
+HALF, ROUND_OFF = 0.5, 1e-6  # nm: a period is drawn as the nearest whole number of them
 MOST_LISTED = 20  # differing places named one by one
 MOST_ORDERS = 512  # along an axis; wider tables are compared around the wanted orders
 
@@ -111,11 +113,11 @@ def array_differences(result: Result, drawing: Drawing) -> list[Difference]:
         result.config.element.pixels,
         strict=True,
     ):
-        exact = wanted * 1e9 if count > 1 else spacing  # a line grating may have any height
-        if spacing != cell or abs(spacing - exact) > 0.5 + 1e-6:
+        exact = wanted / NANO if count > 1 else spacing  # a line grating may have any height
+        if spacing != cell or abs(spacing - exact) > HALF + ROUND_OFF:
             kind = f"period along {axis}: cells every {spacing} nm, not {exact:.1f} nm"
             found.append(Difference(None, kind, None, None, None))
-    aperture = result.config.element.aperture * 1e9
+    aperture = result.config.element.aperture / NANO
     for axis, spacing, copies in zip("yx", drawing.spacing, drawing.copies, strict=True):
         if spacing * copies < aperture - 1:
             kind = f"the array leaves part of the aperture empty along {axis}"
@@ -132,7 +134,7 @@ def orientation_differences(drawing: Drawing) -> list[Difference]:
     seen = {(round(x), round(y)) for x, y in (drawing.mark - low) / stroke}
     if seen == LETTER_F:
         return []
-    x_m, y_m = (float(c) * 1e-9 for c in low)
+    x_m, y_m = (float(c) * NANO for c in low)
     kind = "the layout is mirrored or turned: the F does not read"
     return [Difference(None, kind, x_m, y_m, None)]
 
