@@ -169,7 +169,7 @@ def verdicts(config: Config, reachable: Bound) -> Iterator[LimitVerdict]:
 def wording(
     limits: tuple[LimitVerdict, ...], reachable: Bound, levels: int
 ) -> tuple[list[str], list[str]]:
-    """What is reachable, in a sentence, and cautions about limits that are near or beyond it."""
+    """What is reachable, a word on each limit, and cautions about limits near or beyond it."""
     usual = reachable.efficiency * reachable.levels_factor
     kind = {"proved": "at most", "best known": "at best known", "estimate": "an estimated"}
     told = [
@@ -180,20 +180,24 @@ def wording(
     for limit in limits:
         sense, number = limit.limit.split()
         if limit.name != "efficiency" or sense != ">=":
+            told.append(f"{limit.name} {limit.limit}: no bound is known, the design decides")
             continue
-        wanted = float(number)
+        wanted = units.percent(float(number))
         if limit.met is False:
-            told.append(f"efficiency of {units.percent(wanted)} is out of reach: it is proved")
-        elif wanted > usual:
-            finer = next(
-                (n for n in (4, 8, 16) if n > levels > 0 and helps(n, wanted, reachable)), 0
-            )
-            advice = f"; {finer} levels would leave room" if finer else "; lower the limit"
-            cautions.append(
-                f"efficiency of {units.percent(wanted)} is above what these levels usually leave"
-                f" ({units.percent(usual)}){advice}"
-            )
+            told.append(f"efficiency >= {wanted}: out of reach, proved")
+        elif float(number) <= usual:
+            told.append(f"efficiency >= {wanted}: within what these levels usually leave")
+        else:
+            told.append(f"efficiency >= {wanted}: above what these levels usually leave")
+            cautions.append(advice(float(number), reachable, levels))
     return told, cautions
+
+
+def advice(wanted: float, reachable: Bound, levels: int) -> str:
+    """What to do about an efficiency that these levels usually do not leave."""
+    finer = next((n for n in (4, 8, 16) if n > levels > 0 and helps(n, wanted, reachable)), 0)
+    way = f"{finer} levels would leave room" if finer else "lower the limit"
+    return f"an efficiency of {units.percent(wanted)} is above what {levels} levels usually leave: {way}"
 
 
 def helps(levels: int, wanted: float, reachable: Bound) -> bool:

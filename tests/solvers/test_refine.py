@@ -92,3 +92,28 @@ def test_few_levels_keep_their_range(levels):
     result, _ = design(Stopper(10_000), element__levels=levels)
     assert result.mask.levels.max() < levels
     assert len(result.mask.layers) == levels.bit_length() - 1
+
+
+def test_compare_shows_each_method_as_published_and_refined(monkeypatch, capsys):
+    path = job(**(SEARCH | {"solver__methods": ["gradient", "weighted"], "solver__steps": 20}))
+    status, out, err = call(
+        monkeypatch, capsys, "compare", path, "--out", "all", "--json", "--quiet"
+    )
+    assert status in (0, 1), err
+    told = json.loads(out)
+    ways = [(row["name"], row["refined"]) for row in told["methods"]]
+    assert ways == [
+        ("gradient", False),
+        ("weighted", False),
+        ("gradient", True),
+        ("weighted", True),
+    ]
+    for name, refined in ways:
+        folder = Path("all") / (name if refined else f"{name}-as-published")
+        assert (folder / "record.h5").is_file()
+    refined = [row for row in told["methods"] if row["refined"]]
+    assert all(row["uniformity_error"] <= 0.02 for row in refined)
+    status, again, _ = call(
+        monkeypatch, capsys, "compare", path, "--out", "all", "--resume", "--json"
+    )
+    assert json.loads(again)["methods"] == told["methods"]
