@@ -33,7 +33,7 @@ class Feasibility:
     """All that `doe check` tells."""
 
     facts: tuple[Fact, ...]
-    bound: Bound
+    bound: Bound | None  # None where nothing is wanted
     limits: tuple[LimitVerdict, ...]
     verdicts: tuple[str, ...]
     warnings: tuple[str, ...]
@@ -46,6 +46,9 @@ class Feasibility:
 
 def assess(config: Config) -> Feasibility:
     """What a job means and what can be had of it."""
+    if config.target.kind == "none":
+        facts = (*beam_facts(config), *mask_facts(config))
+        return Feasibility(facts, None, (), (), tuple(warnings(config)))
     target = build(config)
     pixels, levels = config.element.pixels, config.element.levels
     reachable = bound(target.m_y, target.m_x, target.share, pixels, levels)
@@ -54,6 +57,7 @@ def assess(config: Config) -> Feasibility:
     return Feasibility(
         facts=(
             *order_facts(config, target),
+            *beam_facts(config),
             *spot_facts(config, target),
             *mask_facts(config),
             *cost_facts(config),
@@ -89,26 +93,29 @@ def order_facts(config: Config, target: SpotTarget) -> Iterator[Fact]:
     yield Fact("largest_angle_rad", "outermost spot", math.asin(sine), text)
 
 
-def spot_facts(config: Config, target: SpotTarget) -> Iterator[Fact]:
-    """Spot size, spacing over size, periods in the beam, light lost at the aperture, smear."""
-    beam = config.beam
-    angle = sampling.divergence(beam.wavelength, beam.diameter, beam.m2)
-    spot = angle
+def beam_facts(config: Config) -> Iterator[Fact]:
+    """Spot size, light lost at the aperture, and how far the pixels reach."""
+    beam, diameter = config.beam, derived.beam_diameter(config)
     if config.plane.focal_length:
-        spot = sampling.spot_diameter(
-            beam.wavelength, config.plane.focal_length, beam.diameter, beam.m2
-        )
+        spot = sampling.spot_diameter(beam.wavelength, config.plane.focal_length, diameter, beam.m2)
         yield Fact("spot_diameter_m", "spot diameter (1/e^2)", spot, units.length(spot))
     else:
+        angle = sampling.divergence(beam.wavelength, diameter, beam.m2)
         yield Fact("spot_angle_rad", "spot width (1/e^2)", angle, units.angle(angle))
+    lost = derived.aperture_loss(config)
+    if lost is not None:
+        yield Fact("aperture_loss", "beam cut by the aperture", lost, units.percent(lost, 3))
+
+
+def spot_facts(config: Config, target: SpotTarget) -> Iterator[Fact]:
+    """Spacing over spot size, periods in the beam, smear."""
+    beam, diameter = config.beam, derived.beam_diameter(config)
     spacing = derived.spot_spacing(config)
     if spacing is not None:
-        ratio = spacing / angle
+        ratio = spacing / sampling.divergence(beam.wavelength, diameter, beam.m2)
         yield Fact("pitch_to_spot", "spot pitch over spot diameter", ratio, f"{ratio:.2f}")
-    periods = beam.diameter / max(derived.period(config))
+    periods = diameter / max(derived.period(config))
     yield Fact("periods_in_beam", "periods in the beam", periods, f"{periods:.2f}")
-    lost = sampling.aperture_loss(beam.diameter, config.element.aperture)
-    yield Fact("aperture_loss", "beam cut by the aperture", lost, units.percent(lost, 3))
     yield from smear(config, target)
 
 

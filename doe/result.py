@@ -77,6 +77,44 @@ class LimitVerdict:
 
 
 @dataclass(frozen=True)
+class PlaneLight:
+    """Light of a single element in one plane; the power of the whole beam before it is 1.
+
+    y, x are metres from the axis, or direction cosines for the plane kind "angles"; irradiance is
+    per their square. Widths are four times the standard deviation within the window (ISO 11146).
+    """
+
+    kind: str
+    shift: float  # m beyond the plane of the config
+    y: Float[np.ndarray, " y"]
+    x: Float[np.ndarray, " x"]
+    irradiance: Float[np.ndarray, "y x"]
+    method: str
+    range: tuple[float, float]  # m, distances at which the method serves
+    why: str
+
+    @property
+    def power(self) -> float:
+        """Share of the beam's power in the window."""
+        return float(self.irradiance.sum() * np.gradient(self.y)[0] * np.gradient(self.x)[0])
+
+    @property
+    def centroid(self) -> tuple[float, float]:
+        """First moments (y, x). Source: ISO 11146-1 (from memory)."""
+        total = self.irradiance.sum()
+        y = float((self.irradiance.sum(axis=1) * self.y).sum() / total)
+        return y, float((self.irradiance.sum(axis=0) * self.x).sum() / total)
+
+    @property
+    def width(self) -> tuple[float, float]:
+        """Second-moment diameters (y, x). Source: ISO 11146-1 (from memory)."""
+        (y, x), total = self.centroid, self.irradiance.sum()
+        spread_y = (self.irradiance.sum(axis=1) * (self.y - y) ** 2).sum() / total
+        spread_x = (self.irradiance.sum(axis=0) * (self.x - x) ** 2).sum() / total
+        return 4 * float(np.sqrt(spread_y)), 4 * float(np.sqrt(spread_x))
+
+
+@dataclass(frozen=True)
 class Result:
     """Everything a record holds."""
 

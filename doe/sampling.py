@@ -45,6 +45,19 @@ def focal_position(direction: float, focal_length: float, mapping: Mapping) -> f
     return focal_length * heights[mapping]
 
 
+def focal_direction(position: float, focal_length: float, mapping: Mapping) -> float:
+    """Direction cosine that a lens focuses `position` [m] from the axis: inverse of focal_position.
+
+    Gives 2, which is no direction, where no wave goes there. Source: as focal_position.
+    """
+    ratio = position / focal_length
+    if mapping == "f-sin":
+        return ratio
+    if mapping == "f-tan":
+        return math.sin(math.atan(ratio))
+    return math.sin(ratio) if abs(ratio) < math.pi / 2 else 2.0
+
+
 def spot_diameter(wavelength: float, focal_length: float, beam_diameter: float, m2: float) -> float:
     """1/e^2 diameter [m] of a focused Gaussian beam: 4 wavelength f M^2 / (pi D).
 

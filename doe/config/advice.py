@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from doe import sampling, units
 from doe.config import derived
 from doe.config.schema import Config
+from doe.config.target import NoTarget
 
 THIN_FEATURE = 10  # wavelengths; below it thin-element figures are off. Common practice, no source
 THIN_ANGLE = 15 * units.DEGREE  # common practice, no source
@@ -24,20 +25,23 @@ def warnings(config: Config) -> list[str]:
 
 
 def beam_warnings(config: Config) -> Iterator[str]:
-    """Periods in the beam, and light lost at the aperture."""
-    beam, aperture = config.beam, config.element.aperture
-    lost = sampling.aperture_loss(beam.diameter, aperture)
-    if lost > 0.01:
+    """A converted size, periods in the beam, and light lost at the aperture."""
+    if config.beam.fwhm is not None:
+        sizes = " x ".join(units.length(size) for size in config.beam.diameter or ())
+        yield f"the FWHM is taken as 1/e^2 diameters of {sizes} (y, x): a factor of 1.699"
+    diameter, aperture = derived.beam_diameter(config), config.element.aperture
+    lost = derived.aperture_loss(config)
+    if lost is not None and lost > 0.01:
         yield (
             f"the aperture of {units.length(aperture)} cuts {units.percent(lost)} off a beam of "
-            f"{units.length(beam.diameter)}: use an aperture of at least 1.5 beam diameters"
+            f"{units.length(diameter)}: use an aperture of at least 1.5 beam diameters"
         )
     longest = max(derived.period(config))
-    if beam.diameter < FEW_PERIODS * longest:
+    if config.element.kind == "unit-cell" and diameter < FEW_PERIODS * longest:
         yield (
-            f"only {beam.diameter / longest:.1f} periods lie in the beam: the uniformity will "
+            f"only {diameter / longest:.1f} periods lie in the beam: the uniformity will "
             f"depend on where the element sits; use a period of at most "
-            f"{units.length(beam.diameter / FEW_PERIODS)}"
+            f"{units.length(diameter / FEW_PERIODS)}"
         )
 
 
@@ -81,6 +85,8 @@ def process_warnings(config: Config) -> Iterator[str]:
 
 def target_warnings(config: Config) -> Iterator[str]:
     """Twin images, wide angles and spots that merge."""
+    if isinstance(config.target, NoTarget):
+        return
     steps = derived.order_steps(config)
     spots = config.target.spots(steps)
     places = {(round(s.m_y), round(s.m_x)): s.weight for s in spots}
@@ -102,7 +108,7 @@ def target_warnings(config: Config) -> Iterator[str]:
 def crowding(config: Config) -> Iterator[str]:
     """Spots of a grid closer to one another than the beam resolves."""
     beam, spacing = config.beam, derived.spot_spacing(config)
-    spread = sampling.divergence(beam.wavelength, beam.diameter, beam.m2)
+    spread = sampling.divergence(beam.wavelength, derived.beam_diameter(config), beam.m2)
     if spacing is not None and spacing < CLOSE_SPOTS * spread:
         yield (
             f"the spots lie {spacing / spread:.1f} spot diameters apart, so that they overlap and "

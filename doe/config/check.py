@@ -10,7 +10,7 @@ from collections.abc import Callable, Iterator, Mapping
 from typing import Any
 
 from doe import sampling, units
-from doe.config import fit
+from doe.config import fit, single
 from doe.config.fit import FEWEST_PIXELS, Spots, Trouble, resolved_period
 from doe.config.schema import Beam, Element, Limits, MaterialTable, Plane, Process
 from doe.errors import listing, nearest
@@ -55,21 +55,6 @@ def fit_range(beam: Beam, material: MaterialTable) -> Iterator[Trouble]:
         span = f"{units.length(known.shortest)} to {units.length(known.longest)}"
         problem = f"{units.length(beam.wavelength)} lies outside the fit of {material.name}"
         yield Trouble("beam.wavelength", problem, span, "give `index` instead of `name`")
-
-
-def plane(plane: Plane) -> Iterator[Trouble]:
-    """A lens has a focal length, angles have none."""
-    if plane.kind == "lens" and plane.focal_length is None:
-        yield Trouble(
-            "plane.focal_length", "a lens needs its focal length", "a length", 'add it: "100 mm"'
-        )
-    if plane.kind == "angles" and plane.focal_length is not None:
-        yield Trouble(
-            "plane.focal_length",
-            'it contradicts `kind = "angles"`',
-            "no focal length with angles",
-            'remove it, or set `kind = "lens"`',
-        )
 
 
 def levels(element: Element, process: Process) -> Iterator[Trouble]:
@@ -143,7 +128,14 @@ def limits(limits: Limits) -> Iterator[Trouble]:
 CHECKS: list[Check] = [
     material,
     fit_range,
-    plane,
+    single.element,
+    single.beam,
+    single.aperture,
+    single.wavefront,
+    single.cell_beam,
+    single.plane,
+    single.window,
+    single.reach,
     levels,
     pixels,
     fit.pitch,

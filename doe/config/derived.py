@@ -8,9 +8,16 @@ Pair = tuple[float, float]
 
 
 def period(config: Config) -> Pair:
-    """Period (y, x) [m]."""
-    assert config.element.period is not None  # filled in by config.load.resolve
-    return config.element.period
+    """Period (y, x) [m] of a unit cell; the size of a single element."""
+    found = config.element.period or config.element.size
+    assert found is not None  # filled in by config.load.resolve
+    return found
+
+
+def beam_diameter(config: Config) -> float:
+    """Smaller 1/e^2 diameter [m] of the beam."""
+    assert config.beam.diameter is not None  # filled in by config.load.resolve
+    return min(config.beam.diameter)
 
 
 def index(config: Config) -> float:
@@ -37,6 +44,13 @@ def spot_spacing(config: Config) -> float | None:
         return None
     axes = zip(order_steps(config), config.target.nearest_steps(), strict=True)
     return min((step * orders for step, orders in axes if orders), default=None)
+
+
+def aperture_loss(config: Config) -> float | None:
+    """Share of a Gaussian beam that the aperture cuts; None for other profiles."""
+    if config.beam.profile != "gaussian":
+        return None
+    return sampling.aperture_loss(beam_diameter(config), config.element.aperture)
 
 
 def mask_count(config: Config) -> int:

@@ -7,14 +7,14 @@ from typing import NamedTuple
 
 from doe import units
 from doe.config.schema import Beam, Element, Plane
-from doe.config.target import Angles, Grid, OrderList, Spot
+from doe.config.target import Angles, Grid, NoTarget, OrderList, Spot
 
 MOST_SPOTS = 20_000
 FEWEST_PIXELS = 8  # along an axis that varies
 ON_ORDER = 0.01  # of the order spacing: an angle this close to an order counts as on it
 SAME_PERIOD = 1e-4  # relative: periods are rounded to the nanometre on the mask
 
-Spots = Grid | OrderList | Angles
+Spots = Grid | OrderList | Angles | NoTarget
 
 
 class Trouble(NamedTuple):
@@ -63,6 +63,8 @@ def grid(target: Spots) -> Iterator[Trouble]:
 
 def period(beam: Beam, element: Element, plane: Plane, target: Spots) -> Iterator[Trouble]:
     """A period, given or following from the pitch, and no two that differ."""
+    if element.kind == "single":
+        return
     wanted = period_of_pitch(beam, plane, target)
     given = element.period
     if given is None and wanted is None:
@@ -110,12 +112,16 @@ def resolved_period(
     beam: Beam, element: Element, plane: Plane, target: Spots
 ) -> tuple[float, float] | None:
     """Period (y, x) [m] given or following from the pitch; None where neither is there."""
+    if element.kind == "single":
+        return None
     found = element.period or period_of_pitch(beam, plane, target)
     return None if found is None else square_rows(element, found)
 
 
 def spot_count(target: Spots) -> Iterator[Trouble]:
     """Some spots, not too many, with as many weights."""
+    if isinstance(target, NoTarget):
+        return
     count = target.count()
     key = "target.shape" if isinstance(target, Grid) else f"target.{target.kind}"
     if not 0 < count <= MOST_SPOTS:

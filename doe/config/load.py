@@ -11,6 +11,7 @@ from doe import machine, units
 from doe.config import check, fit, toml
 from doe.config.faults import schema_faults, shorten
 from doe.config.schema import Config, Process
+from doe.config.single import FWHM_TO_DIAMETER
 from doe.config.toml import Document
 from doe.errors import BudgetError, ConfigError, Fault
 from doe.material import MATERIALS
@@ -33,6 +34,21 @@ def load(path: Path) -> tuple[Config, str]:
     config = resolve(Config.model_validate(raw))
     check_memory(config, document)
     return config, document.text
+
+
+def check_designable(config: Config, path: Path) -> None:
+    """Refuse to design where nothing is wanted. Error: ConfigError."""
+    if config.target.kind == "none":
+        raise ConfigError(
+            Fault(
+                "there is nothing to design: no target",
+                "a unit cell with spots",
+                "look at a mask with `doe evaluate`, or state a target",
+                str(path),
+                key="target.kind",
+                value='"none"',
+            )
+        )
 
 
 def from_record(text: str) -> Config:
@@ -62,10 +78,12 @@ def resolve(config: Config) -> Config:
     period = fit.resolved_period(config.beam, config.element, config.plane, config.target)
     name = config.material.name
     index = MATERIALS[name].index(config.beam.wavelength) if name else config.material.index
-    process = config.process
+    process, beam = config.process, config.beam
+    diameter = beam.diameter or tuple(size * FWHM_TO_DIAMETER for size in beam.fwhm or ())
     gap = process.min_gap or process.min_feature
     return config.model_copy(
         update={
+            "beam": beam.model_copy(update={"diameter": diameter}),
             "element": config.element.model_copy(update={"period": period}),
             "material": config.material.model_copy(update={"index": index}),
             "process": process.model_copy(update={"file": None, "min_gap": gap}),

@@ -71,6 +71,7 @@ Wavelength = Annotated[
     float, quantity(units.LENGTH, "1030 nm", low=100 * units.NANO, high=20 * units.MICRO)
 ]
 Length = Annotated[float, quantity(units.LENGTH, "1.03 mm", low=POSITIVE, high=1e4)]
+Distance = Annotated[float, quantity(units.LENGTH, "-2 mm", low=-1e4, high=1e4)]
 Angle = Annotated[float, quantity(units.ANGLE, "2.5 deg", low=-math.pi, high=math.pi)]
 Duration = Annotated[float, quantity(units.TIME, "300 fs", low=POSITIVE)]
 Spread = Annotated[float, quantity(units.SHARE, "2 %", low=0, high=1)]

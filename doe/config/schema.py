@@ -5,6 +5,8 @@ from typing import Annotated, Any, Literal
 from pydantic import BeforeValidator, Field
 
 from doe.config.quantity import (
+    Angle,
+    Distance,
     Duration,
     Length,
     Limit,
@@ -16,6 +18,7 @@ from doe.config.quantity import (
     Spread,
     Wavelength,
     as_pair,
+    as_tuple,
     wrong,
 )
 from doe.config.solver import Solver
@@ -57,22 +60,39 @@ Levels = Annotated[int, BeforeValidator(check_levels)]
 Title = Annotated[str, BeforeValidator(plain_text)]
 
 
+Pair = Annotated[tuple[Length, Length], BeforeValidator(as_pair)]
+Shifts = Annotated[tuple[Distance, Distance], BeforeValidator(as_pair)]
+Tilts = Annotated[tuple[Angle, Angle], BeforeValidator(as_pair)]
+Wholes = Annotated[tuple[Whole, Whole], BeforeValidator(as_pair)]
+
+
 class Beam(Section):
-    """The laser beam at the element."""
+    """The laser beam at the element; pairs are (y, x)."""
 
     wavelength: Wavelength
-    diameter: Length  # 1/e^2
+    profile: Literal["gaussian", "super-gaussian", "plane", "file"] = "gaussian"
+    diameter: Pair | None = None  # 1/e^2 of the irradiance
+    fwhm: Pair | None = None  # in its place, of a Gaussian
+    order: Annotated[float, Field(ge=2, le=200)] = 10.0  # m of exp(-2 (2 r / D)^m)
+    file: str | None = None  # irradiance, row 0 of a picture at the largest y
+    file_pixel: Length | None = None
     m2: Annotated[float, Field(ge=1, le=1000)] = 1.0
+    divergence: Angle | None = None  # residual, full 1/e^2 angle; of all emitters where there are
+    emitters: Wholes | None = None  # of an incoherent array that fills `divergence`
+    decentre: Shifts = (0.0, 0.0)
+    tilt: Tilts = (0.0, 0.0)
+    curvature: Distance | None = None  # radius of the wavefront at the element, + = diverging
     pulse_duration: Duration | None = None
     bandwidth: Length | None = None
 
 
 class Element(Section):
-    """The element: its cell, pixels, levels and clear aperture; pairs are (y, x)."""
+    """The element: its cell or size, pixels, levels and clear aperture; pairs are (y, x)."""
 
-    kind: Literal["unit-cell"]
-    period: Annotated[tuple[Length, Length], BeforeValidator(as_pair)] | None = None
-    pixels: Annotated[tuple[Whole, Whole], BeforeValidator(as_pair)]
+    kind: Literal["unit-cell", "single"]
+    period: Pair | None = None  # of a unit cell
+    size: Pair | None = None  # of a single element
+    pixels: Wholes
     levels: Levels
     aperture: Length
 
@@ -99,11 +119,16 @@ class Process(Section):
 
 
 class Plane(Section):
-    """Where the pattern is judged."""
+    """Where the pattern is judged; window and samples are for single elements, (y, x)."""
 
-    kind: Literal["angles", "lens"]
+    kind: Literal["angles", "lens", "screen"]
     focal_length: Length | None = None
     mapping: Literal["f-sin", "f-tan", "f-theta"] = "f-sin"
+    distance: Length | None = None  # of a screen
+    window: Pair | None = None  # behind a lens or on a screen
+    window_angle: Tilts | None = None  # with angles
+    samples: Wholes = (256, 256)
+    shifts: Annotated[tuple[Distance, ...], BeforeValidator(as_tuple), Field(min_length=1)] = (0.0,)
 
 
 class Scored(Section):

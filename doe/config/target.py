@@ -125,7 +125,22 @@ class Angles(Section):
         ]
 
 
-Target = Annotated[Grid | OrderList | Angles, Field(discriminator="kind")]
+class NoTarget(Section):
+    """Nothing is wanted: the light is looked at as it is."""
+
+    kind: Literal["none"]
+    weights: None = None
+
+    def count(self) -> int:
+        """No spots."""
+        return 0
+
+    def spots(self, steps: tuple[float, float]) -> list[Spot]:
+        """No spots."""
+        return []
+
+
+Target = Annotated[Grid | OrderList | Angles | NoTarget, Field(discriminator="kind")]
 
 
 def centred(count: int, step: int) -> tuple[int, ...]:

@@ -5,6 +5,8 @@ import numpy as np
 from jax import lax
 from jaxtyping import Array, Complex, Float, Int
 
+from doe.optics.fft import fft2
+
 
 def basis(orders: Int[np.ndarray, " order"], pixels: int) -> Complex[np.ndarray, "order pixel"]:
     """Weights with which the pixels of a period add up to order amplitudes, along one axis.
@@ -53,7 +55,7 @@ def order_table(near: Complex[Array, "y x"]) -> Float[Array, "y x"]:
     Error: round-off. Source: as `basis`, by fast Fourier transform.
     """
     rows, columns = near.shape
-    far = jnp.fft.fftshift(jnp.fft.fft2(near)) / (rows * columns)
+    far = jnp.fft.fftshift(fft2(near)) / (rows * columns)
     envelope_y = jnp.sinc(order_numbers(rows) / rows) ** 2
     envelope_x = jnp.sinc(order_numbers(columns) / columns) ** 2
     return (far.real**2 + far.imag**2) * envelope_y[:, None] * envelope_x[None, :]

@@ -29,7 +29,7 @@ def read_phase(path: Path | None, kind: str | None, config: Config) -> Float[np.
         mask = read.read(path).mask
         values: Any = mask.phase if mask.levels is None else mask.levels
     else:
-        values = tiff(path) if path.suffix in (".tif", ".tiff") else array(path)
+        values = read_array(path)
     if values.shape != config.element.pixels:
         shape = list(config.element.pixels)
         raise unfit(path, f"the mask has shape {list(values.shape)}", f"[y, x] = {shape}")
@@ -54,6 +54,11 @@ def phase_of(values: Any, kind: str, config: Config, path: Path) -> Float[np.nda
         scale = 1 / derived.phase_height(config) if kind == "height" else 1.0
     phase: Float[np.ndarray, "y x"] = values.astype(float) * scale
     return phase
+
+
+def read_array(path: Path) -> NDArray[Any]:
+    """The values of a `.npy` or TIFF file, row 0 at the smallest y. Error: FileError."""
+    return tiff(path) if path.suffix in (".tif", ".tiff") else array(path)
 
 
 def array(path: Path) -> NDArray[Any]:
