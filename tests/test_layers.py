@@ -13,18 +13,19 @@ LAYERS = [
     "material",
     "config",
     "result",
-    "targets bound",
+    "targets bound direct_sum",
     "store",
     "optics fabrication",
     "metrics",
     "problem",
-    "solvers scoring",
-    "pipeline",
+    "solvers scoring planes",
+    "pipeline referee",
     "feasibility export signoff report",
     "cli",
 ]
 RANK = {name: rank for rank, names in enumerate(LAYERS) for name in names.split()}
-MAY_USE_JAX = {"optics", "fabrication", "metrics", "problem", "solvers", "scoring", "pipeline"}
+MAY_USE_JAX = {"optics", "fabrication", "metrics", "problem", "solvers", "pipeline"}
+MAY_USE_JAX |= {"scoring", "planes", "referee"}
 DRY = sorted(set(RANK) - MAY_USE_JAX)
 LIGHT = ["errors", "units", "sampling", "material", "machine", "files", "cli"]
 HEAVY = {"jax", "optax", "numpy", "scipy", "h5py", "matplotlib", "gdstk", "numba", "rich"}

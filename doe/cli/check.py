@@ -27,7 +27,7 @@ def check(config: Path, as_json: bool, quiet: bool, no_color: bool) -> int:
                 "feasible": found.feasible,
                 "warnings": list(found.warnings),
                 "limits": [vars(limit) for limit in found.limits],
-                "bound": vars(found.bound),
+                "bound": vars(found.bound) if found.bound else None,
                 "facts": {fact.name: fact.value for fact in found.facts},
             }
         )

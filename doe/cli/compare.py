@@ -31,10 +31,11 @@ def compare(
     comparison.csv and comparison.png. The exit status is that of the best record.
     """
     from doe import files
-    from doe.config.load import load
+    from doe.config.load import check_designable, load
     from doe.report.comparison import draw
 
     job, text = load(config)
+    check_designable(job, config)
     folder = out or default_out(config)
     with files.output_folder(folder):
         if not resume:

@@ -37,10 +37,11 @@ def run(
     """
     from doe import files
     from doe.cli.session import RECORD, checkpoint_facts, design_into, finished
-    from doe.config.load import load, seeded
+    from doe.config.load import check_designable, load, seeded
     from doe.report.overview import draw
 
     job, text = load(config)
+    check_designable(job, config)
     job = seeded(job, seed)
     folder = out or default_out(config)
     record = folder / RECORD

@@ -111,7 +111,7 @@ def test_a_shape_that_shrinks_in_gds_would_be_seen():
 
 @pytest.mark.parametrize("aperture", ["10 mm", "10.24 mm", "0.5 mm", "7.3214567 mm"])
 def test_the_array_of_cells_covers_the_aperture_and_is_centred(aperture):
-    result = result_of(element__aperture=aperture)
+    result = result_of(element__aperture=aperture, beam__diameter="0.3 mm")
     library = read_back(result)
     (reference,) = cell_of(library, "ELEMENT").references
     repetition = reference.repetition
