@@ -28,7 +28,7 @@ from doe.optics.propagate import angular_spectrum, fresnel_scaled
 from doe.result import PlaneLight
 
 Near = Complex[Array, "y x"]
-FLAT = 0.05  # of a resolved angle: a screen this near to the paraxial mapping needs no exact one
+FLAT = 0.001  # of a resolved angle: a screen this near to straight lines of directions is on them
 FINE = 8  # samples of the far field to a resolved angle, from which a screen is interpolated
 MOST_DIRECTIONS = 8192  # along an axis of that far field
 PAD = 3  # so that rays from one edge of the element to the far edge of the window are kept
@@ -251,7 +251,12 @@ def far_on_screen(
             )
         )
     grids = [(np.arange(n) - (n - 1) / 2) * resolved / FINE for n in counts]
-    table = density(far_field(near, pitch, wavelength, *grids), wavelength)
+    table = np.asarray(far_field(near, pitch, wavelength, *grids))
     indices = [s * FINE / resolved + (n - 1) / 2 for s, n in zip((s_y, s_x), counts, strict=True)]
-    found = ndimage.map_coordinates(table, indices, order=3, mode="nearest")
-    return np.asarray(np.maximum(found, 0.0) * (distance / away) ** 4 / distance**2)
+    # The amplitude, which varies half as fast as the irradiance, is what is interpolated.
+    real, imag = (
+        ndimage.map_coordinates(part, indices, order=3, mode="nearest")
+        for part in (table.real, table.imag)
+    )
+    light = (real**2 + imag**2) / wavelength**2
+    return np.asarray(light * (distance / away) ** 4 / distance**2)

@@ -2,6 +2,7 @@
 
 from functools import partial
 from pathlib import Path
+from typing import NamedTuple
 
 import numpy as np
 from jaxtyping import Complex, Float, Int
@@ -36,6 +37,56 @@ def worst_departure(
     return float(np.abs(exact - plane.irradiance[rows, columns]).max() / plane.irradiance.max())
 
 
+class Seen(NamedTuple):
+    """Irradiance [1/m^2] at one point by both Rayleigh-Sommerfeld kinds; their spread is the
+    uncertainty of the scalar model there."""
+
+    z_m: float
+    y_m: float
+    x_m: float
+    first_kind: float
+    second_kind: float
+
+
+def at_points(
+    config: Config,
+    phase: Float[np.ndarray, "y x"],
+    folder: Path,
+    points: Float[np.ndarray, "p 3"],
+) -> list[Seen]:
+    """Light at any points (z, y, x) [m] behind the element, by direct summation.
+
+    Error: ConfigError for points too near the element or too many.
+    """
+    field, _ = beam_field(config, folder)
+    near = field * np.exp(1j * phase)
+    pitch, wavelength = derived.pixel_pitch(config), config.beam.wavelength
+    check_terms(near, pitch, points, wavelength)
+    light = [
+        np.abs(direct_sum.rayleigh_sommerfeld(near, pitch, points, wavelength, kind=kind)) ** 2
+        for kind in (1, 2)
+    ]
+    return [Seen(*map(float, row)) for row in np.column_stack([points, *light])]
+
+
+def check_terms(
+    near: Complex[np.ndarray, "y x"],
+    pitch: tuple[float, float],
+    points: Float[np.ndarray, "p 3"],
+    wavelength: float,
+) -> None:
+    """Refuse a sum that would take minutes."""
+    if direct_sum.terms(near, pitch, points, wavelength) > MOST_WAVELETS:
+        raise ConfigError(
+            Fault(
+                "the direct sum at so many points would take minutes",
+                f"up to {MOST_WAVELETS:.0e} wavelets",
+                "ask for fewer points, or use fewer pixels",
+                key="--referee or --at",
+            )
+        )
+
+
 def places(plane: PlaneLight, points: int) -> tuple[Int[np.ndarray, " p"], Int[np.ndarray, " p"]]:
     """Rows and columns of the peak and of bright points drawn at random."""
     light = plane.irradiance
@@ -56,15 +107,7 @@ def on_screen(
     pitch, wavelength = derived.pixel_pitch(config), config.beam.wavelength
     distance = np.full(len(points), config.plane.distance + plane.shift)
     places = np.column_stack([distance, points])
-    if direct_sum.terms(near, pitch, places, wavelength) > MOST_WAVELETS:
-        raise ConfigError(
-            Fault(
-                "the direct sum at so many points would take minutes",
-                f"up to {MOST_WAVELETS:.0e} wavelets",
-                "ask for fewer points, or use fewer pixels",
-                key="--referee",
-            )
-        )
+    check_terms(near, pitch, places, wavelength)
     field = direct_sum.rayleigh_sommerfeld(near, pitch, places, wavelength)
     return np.asarray(np.abs(field) ** 2)
 

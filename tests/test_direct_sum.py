@@ -589,3 +589,27 @@ def test_memory_stays_far_below_200_megabytes():
     peak = tracemalloc.get_traced_memory()[1]
     tracemalloc.stop()
     assert peak < 50e6
+
+
+@pytest.mark.parametrize(
+    ("width", "first", "second"),
+    [
+        (0.25, 0.37332, 0.70945),
+        (0.5, 0.64776, 1.06291),
+        (1.0, 0.84746, 0.97155),
+        (1.5, 0.89150, 1.01683),
+    ],
+)
+def test_narrow_slits_pass_the_tabulated_share_of_the_light(width, first, second):
+    """Power on a far half circle over that on the slit, aperture field 1, in wavelengths.
+
+    Digits by two own solutions of the aperture integrals; the question is that of Morse and
+    Rubenstein, Phys. Rev. 54, 895 (1938) (from memory).
+    """
+    far, count = 2000.0, 1500
+    angle = (np.arange(count) + 0.5) / count * np.pi - np.pi / 2
+    points = far * np.stack([np.cos(angle), np.sin(angle)], axis=1)
+    for kind, share in ((1, first), (2, second)):
+        field = cylindrical_sum(np.ones(64, complex), width / 64, points, 1.0, kind=kind)
+        power = (np.abs(field) ** 2).sum() * far * np.pi / count / width
+        assert power == pytest.approx(share, abs=2e-4)

@@ -388,3 +388,53 @@ def test_a_phase_zone_plate_focuses_four_over_pi_squared_of_a_lens(light):
     told = [light(name, **changes)["planes"][0] for name in ("lens.npy", "plate.npy")]
     lens, plate = (plane["peak_irradiance"] for plane in told)
     assert plate / lens == pytest.approx(4 / math.pi**2, rel=0.02)
+
+
+def test_both_kinds_differ_far_off_the_axis_as_their_cosine(light):
+    """Far away the first kind is cos(theta) times the second, in amplitude: Sommerfeld."""
+    changes = {
+        "beam": {"wavelength": "532 nm", "profile": "plane", "diameter": "4 um"},
+        "element": {
+            "kind": "single",
+            "size": "4 um",
+            "pixels": 16,
+            "levels": 0,
+            "aperture": "4 um",
+        },
+        "plane": {"kind": "screen", "distance": "10 mm", "window": "1 mm", "samples": 16},
+    }
+    told = light("--at", "10 mm, 0 mm, 4 mm", "--at", "10 mm, 0 mm, 0 mm", **changes)
+    far, axis = told["points"]
+    cosine = 10 / math.hypot(10, 4)
+    assert far["first_kind"] / far["second_kind"] == pytest.approx(cosine**2, rel=1e-3)
+    assert axis["first_kind"] == pytest.approx(axis["second_kind"], rel=1e-3)
+    assert (far["z_m"], far["x_m"]) == pytest.approx((0.01, 0.004))
+
+
+@pytest.mark.parametrize("text", ["10 mm, 0 mm", "10, 0, 0", "a, b, c", "10 mm; 0 mm; 0 mm"])
+def test_a_point_that_is_none_is_refused(text, monkeypatch, capsys):
+    status, _, err = call(monkeypatch, capsys, "evaluate", job(**tables()), "--at", text)
+    assert status == 3
+    assert "--at" in err
+
+
+def test_a_point_in_the_element_itself_is_refused(monkeypatch, capsys):
+    words = ["evaluate", job(**tables()), "--at", "0 mm, 0 mm, 0 mm"]
+    status, _, err = call(monkeypatch, capsys, *words)
+    assert status == 3
+    assert "; try: " in err
+
+
+def test_a_screen_that_no_propagator_reaches_is_refused_with_a_way_out(monkeypatch, capsys):
+    """Too near for the far field, too steep for Fresnel, too far for the angular spectrum."""
+    changes = {
+        "beam": {"wavelength": "532 nm", "diameter": "4 mm"},
+        "element__pixels": 9000,
+        "element__size": "6 mm",
+        "element__aperture": "6 mm",
+        "plane": {"kind": "screen", "distance": "60 mm", "window": "40 mm"},
+    }
+    status, _, err = call(monkeypatch, capsys, "evaluate", job(**tables(**changes)))
+    assert status in (3, 7)
+    assert "; allowed: " in err
+    assert "; try: " in err

@@ -1,7 +1,7 @@
 """`doe evaluate`: scores of a mask from elsewhere, as drawn or as made with an error."""
 
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 import click
 
@@ -10,6 +10,14 @@ from doe.cli.common import CONFIG, output_options, print_json, print_result, res
 if TYPE_CHECKING:
     from doe.config.schema import Config
     from doe.result import PlaneLight
+
+
+class Wishes(NamedTuple):
+    """What is asked for beside the planes: a folder, a number of referee's points, places."""
+
+    out: Path | None
+    points: int | None
+    at: tuple[str, ...]
 
 
 @click.command(
@@ -40,6 +48,13 @@ if TYPE_CHECKING:
     metavar="N",
     help="Also compute N points of a single element's first plane by direct summation.",
 )
+@click.option(
+    "--at",
+    "at",
+    multiple=True,
+    metavar="'Z, Y, X'",
+    help="Also the light of a single element at this point, by both Rayleigh-Sommerfeld kinds.",
+)
 @output_options
 def evaluate(
     config: Path,
@@ -48,6 +63,7 @@ def evaluate(
     errors: tuple[str, ...],
     out: Path | None,
     points: int | None,
+    at: tuple[str, ...],
     as_json: bool,
     quiet: bool,
     no_color: bool,
@@ -66,7 +82,8 @@ def evaluate(
     made = parse_errors(errors, job)
     if job.element.kind == "single":
         phase = read_phase(mask, kind, job) * (1 + made.depth)
-        return show_planes((job, config), phase, (out, points), as_json=as_json, no_color=no_color)
+        wishes = Wishes(out, points, at)
+        return show_planes((job, config), phase, wishes, as_json=as_json, no_color=no_color)
     result = score(job, text, read_phase(mask, kind, job), made)
     if as_json:
         print_json(result_json(result, None))
@@ -78,7 +95,7 @@ def evaluate(
 def show_planes(
     job: tuple["Config", Path],
     phase: Any,
-    wishes: tuple[Path | None, int | None],
+    wishes: Wishes,
     *,
     as_json: bool,
     no_color: bool,
@@ -87,12 +104,13 @@ def show_planes(
     from doe.config.advice import warnings
     from doe.planes import light_on_planes, smeared
 
-    (config, path), (out, points) = job, wishes
+    config, path = job
     lit = light_on_planes(config, phase, path.parent)
     planes = [smeared(plane, config) for plane in lit.planes]
-    worst = departure((config, path), phase, lit.planes[0], points) if points else None
-    if out is not None:
-        keep(config, planes, out)
+    worst = departure(job, phase, lit.planes[0], wishes.points) if wishes.points else None
+    seen = light_at(job, phase, wishes.at) if wishes.at else []
+    if wishes.out is not None:
+        keep(config, planes, wishes.out)
     notes = warnings(config)
     if as_json:
         print_json(
@@ -103,6 +121,7 @@ def show_planes(
                 "cut_by_aperture": lit.cut,
                 "addressed_power": lit.addressed,
                 "referee": worst,
+                "points": seen,
                 "planes": [plane_json(plane) for plane in planes],
             }
         )
@@ -117,11 +136,36 @@ def show_planes(
     )
     if worst is not None:
         say(f"direct summation: off by at most {worst:.1e} of the peak", no_color=no_color)
+    for point in seen:
+        say(point_line(point), no_color=no_color)
     for why in dict.fromkeys(plane.why for plane in planes):
         say(f"propagation: {why}", no_color=no_color)
     for text in notes:
         say(f"[yellow]note[/]: {text}", no_color=no_color)
     return 0
+
+
+def light_at(
+    job: tuple["Config", Path], phase: Any, texts: tuple[str, ...]
+) -> list[dict[str, float]]:
+    """Light at points told as text."""
+    import numpy as np
+
+    from doe.config.made_part import parse_point
+    from doe.referee import at_points
+
+    config, path = job
+    points = np.array([parse_point(text) for text in texts])
+    return [point._asdict() for point in at_points(config, phase, path.parent, points)]
+
+
+def point_line(point: dict[str, float]) -> str:
+    """One point for a reader, with the spread of the two kinds."""
+    from doe import units
+
+    place = ", ".join(f"{name} {units.length(point[name + '_m'])}" for name in "zyx")
+    first, second = point["first_kind"], point["second_kind"]
+    return f"at {place}: {first:.4g} /m^2 by the first kind, {second:.4g} /m^2 by the second"
 
 
 def departure(job: tuple["Config", Path], phase: Any, plane: "PlaneLight", points: int) -> float:

@@ -1,4 +1,4 @@
-"""Made-part errors written as KEY=VALUE, to plain numbers."""
+"""Made-part errors and points of space written on the command line, to plain numbers."""
 
 from typing import NamedTuple
 
@@ -35,3 +35,21 @@ def parse_errors(given: tuple[str, ...], config: Config) -> Errors:
                 Fault(fault.problem, fault.allowed, fault.fix, key="--error", value=text)
             ) from None
     return Errors(found["depth"], tuple(found[name] for name in names[1:]))
+
+
+def parse_point(text: str) -> tuple[float, float, float]:
+    """A point (z, y, x) [m] in a text such as `300 mm, 0 mm, 20 mm`. Error: ConfigError."""
+    parts = text.split(",")
+    try:
+        z, y, x = (units.parse(part, units.LENGTH, "300 mm") for part in parts)
+    except (units.UnitError, ValueError):
+        raise ConfigError(
+            Fault(
+                "this is no point",
+                "three lengths with units: z, y, x, z from the element",
+                'write it like "300 mm, 0 mm, 20 mm"',
+                key="--at",
+                value=text,
+            )
+        ) from None
+    return z, y, x
