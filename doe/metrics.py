@@ -105,7 +105,8 @@ def range_of(limits: Limits) -> Range:
     stated = [limit for limit in limits.items() if limit[0] in Scores._fields]
     low = {name: one.value * (1 + INSIDE) for name, one in stated if one.sense == ">="}
     high = {name: one.value * (1 - INSIDE) for name, one in stated if one.sense == "<="}
-    high.setdefault("uniformity_error", USUAL_UNIFORMITY)
+    if not UNEVENNESS.keys() & high.keys():
+        high["uniformity_error"] = USUAL_UNIFORMITY
     return Range(
         low=jnp.array([low.get(name, -jnp.inf) for name in Scores._fields]),
         high=jnp.array([high.get(name, jnp.inf) for name in Scores._fields]),

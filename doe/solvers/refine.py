@@ -8,12 +8,13 @@ from numpy.typing import NDArray
 
 from doe.config.derived import rule_pixels
 from doe.config.schema import Config
-from doe.metrics import USUAL_UNIFORMITY
+from doe.metrics import UNEVENNESS, USUAL_UNIFORMITY
 from doe.problem import Problem
 from doe.solvers.hooks import Hooks
 from doe.solvers.search.chains import State, first_state, next_state, settled
 from doe.solvers.search.setup import Setup, prepare
 
+LEAST_DEPARTURE = 1e-5  # what float32 amplitudes can be steered to
 MOST_ORDERS = 400  # wanted orders; the cost of a trial grows with them
 
 
@@ -36,11 +37,6 @@ def is_refined(config: Config, problem: Problem) -> bool:
 def setup_of(config: Config, problem: Problem) -> Setup:
     """The search of a job: limits, rule and work."""
     feature, gap = rule_pixels(config)
-    stated = [
-        one.value
-        for name, one in config.limits.items()
-        if name == "uniformity_error" and one.sense == "<="
-    ]
     search = config.solver.search
     share = np.asarray(problem.share, float)
     caps = np.full(share.shape, np.inf)
@@ -53,13 +49,27 @@ def setup_of(config: Config, problem: Problem) -> Setup:
         share=share,
         caps=caps,
         levels=config.element.levels,
-        uniformity=min(stated, default=USUAL_UNIFORMITY),
+        uniformity=most_departure(config),
         feature=feature,
         gap=gap,
         corners=config.process.corner_contacts == "allow",
         seed=config.run.seed,
         work=(search.chains, search.trials, search.blocks),
     )
+
+
+def most_departure(config: Config) -> float:
+    """Most relative departure of an order from the mean that keeps every limit on unevenness.
+
+    A departure of at most u keeps a uniformity error and an rms error of u and a hottest order of
+    1 + u, so that one number steers the search to all three.
+    """
+    evenness = [
+        one.value - 1 if name == "hottest_to_mean" else one.value
+        for name, one in config.limits.items()
+        if name in UNEVENNESS and one.sense == "<="
+    ]
+    return max(min(evenness, default=USUAL_UNIFORMITY), LEAST_DEPARTURE)
 
 
 def refine(setup: Setup, phase: Float[np.ndarray, "y x"], hooks: Hooks) -> Refined:

@@ -63,6 +63,14 @@ def test_a_search_reaches_limits_that_rounding_misses():
     assert searched.status == "met"
 
 
+@pytest.mark.parametrize(
+    "limits", [{"hottest_to_mean": "<= 1.01"}, {"rms_error": "<= 1 %"}], ids=["hottest", "rms"]
+)
+def test_the_search_keeps_other_limits_on_unevenness_too(limits):
+    searched, _ = design(Stopper(10_000), limits=limits)
+    assert searched.status == "met"
+
+
 def test_a_rule_in_the_process_file_is_kept_and_recorded(monkeypatch, capsys):
     Path("shop.toml").write_text('min_feature = "80 um"\ncorner_contacts = "forbid"\n')
     path = job(**(SEARCH | {"process__file": "shop.toml"}))
