@@ -60,22 +60,21 @@ def at_points(
     """
     field, _ = beam_field(config, folder)
     near = field * np.exp(1j * phase)
-    pitch, wavelength = derived.pixel_pitch(config), config.beam.wavelength
-    check_terms(near, pitch, points, wavelength)
-    light = [
-        np.abs(direct_sum.rayleigh_sommerfeld(near, pitch, points, wavelength, kind=kind)) ** 2
-        for kind in (1, 2)
-    ]
+    light = [summed(config, near, points, kind) for kind in (1, 2)]
     return [Seen(*map(float, row)) for row in np.column_stack([points, *light])]
 
 
-def check_terms(
+def summed(
+    config: Config,
     near: Complex[np.ndarray, "y x"],
-    pitch: tuple[float, float],
     points: Float[np.ndarray, "p 3"],
-    wavelength: float,
-) -> None:
-    """Refuse a sum that would take minutes."""
+    kind: int,
+) -> Float[np.ndarray, " p"]:
+    """Irradiance [1/m^2] at points (z, y, x) [m] by one Rayleigh-Sommerfeld kind.
+
+    Error: ConfigError for a sum that would take minutes.
+    """
+    pitch, wavelength = derived.pixel_pitch(config), config.beam.wavelength
     if direct_sum.terms(near, pitch, points, wavelength) > MOST_WAVELETS:
         raise ConfigError(
             Fault(
@@ -85,6 +84,8 @@ def check_terms(
                 key="--referee or --at",
             )
         )
+    field = direct_sum.rayleigh_sommerfeld(near, pitch, points, wavelength, kind=kind)
+    return np.asarray(np.abs(field) ** 2)
 
 
 def places(plane: PlaneLight, points: int) -> tuple[Int[np.ndarray, " p"], Int[np.ndarray, " p"]]:
@@ -104,12 +105,8 @@ def on_screen(
 ) -> Float[np.ndarray, " p"]:
     """Irradiance on a screen by the direct sum of wavelets."""
     assert config.plane.distance is not None
-    pitch, wavelength = derived.pixel_pitch(config), config.beam.wavelength
     distance = np.full(len(points), config.plane.distance + plane.shift)
-    places = np.column_stack([distance, points])
-    check_terms(near, pitch, places, wavelength)
-    field = direct_sum.rayleigh_sommerfeld(near, pitch, places, wavelength)
-    return np.asarray(np.abs(field) ** 2)
+    return summed(config, near, np.column_stack([distance, points]), kind=1)
 
 
 def in_directions(

@@ -151,9 +151,6 @@ class Scored(Section):
         return [(name, one) for name in names for one in getattr(self, name) or ()]
 
 
-Yield = Annotated[float, Field(gt=0, le=1)]
-
-
 class Made(Scored):
     """Limits the made parts must keep, judged by the forecast."""
 
